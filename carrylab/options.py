@@ -1,0 +1,161 @@
+"""The frozen records a study file is turned into. `study.py` checks every value once; nothing checks again."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Literal, get_args
+
+from carrylab.data.calendar import Interval, Tenor
+
+Kind = Literal["bonds", "currencies", "equities", "columns"]
+Effects = Literal["none", "entity", "time", "both"]
+By = Literal["pooled", "maturity", "economy", "currency", "index", "entity"]
+Unit = Literal["percent", "decimal", "basis points"]
+Compounding = Literal[
+    "continuous", "annual", "semi-annual", "quarterly", "monthly", "simple", "discount", "discount factor"
+]
+DayCount = Literal["act/360", "act/365f", "30/360", "30e/360", "act/act"]
+Timing = Literal["end", "average"]
+Quote = Literal["home per foreign", "foreign per home", "pair", "points"]
+Basis = Literal["trailing 12 months", "per period"]
+MissingMaturity = Literal["exact", "linear in yield", "flat forward", "cubic in yield"]
+MissingTenor = Literal["exact", "linear in rate", "nearest"]
+EquityCurrency = Literal["local", "home unhedged", "home hedged"]
+Errors = Literal[
+    "auto",
+    "classical",
+    "robust",
+    "bartlett",
+    "rectangular",
+    "cosine",
+    "one-period",
+    "clustered: entity",
+    "clustered: date",
+    "clustered: both",
+]
+Factor = Literal["none", "n/(n-k)", "clusters", "clusters, one factor"]
+Reference = Literal["normal", "t"]
+Role = Literal["return", "fundamental", "carried over", "approximation", "other"]
+
+PARITIES: dict[str, tuple[str, ...]] = {
+    "bonds": ("forward-spot", "forward-spot-far", "yield-spread", "yield-spread-to-maturity", "carry"),
+    "currencies": ("uncovered-interest", "forward-discount", "carry"),
+    "equities": ("dividend-price", "carry"),
+    "columns": ("columns",),
+}
+ERRORS: tuple[str, ...] = get_args(Errors)
+
+
+@dataclass(frozen=True, slots=True)
+class Source:
+    """One data file as declared: where it is, what it holds and in which units.
+
+    `role` is the key in `[market.data]`, or the name of a control. `file` is the path as written, `path` the
+    same made absolute. Codes: `day_count` and `scale` map a currency, economy or pair to its value, with
+    "others" for all that are not named. `constants` hold a key column that is one value for the whole file
+    (`economy = "QM"`). `columns` maps a name in the file to the word or key it stands for. `spread` names the
+    key that runs along the columns of a wide file; `pattern` is a regular expression whose named groups read
+    keys from wide column names.
+    """
+
+    role: str
+    path: Path
+    file: str
+    unit: Unit = "decimal"
+    compounding: Compounding = "continuous"
+    day_count: Mapping[str, DayCount] = field(default_factory=dict)
+    timing: Timing = "end"
+    quote: Quote | None = None
+    scale: Mapping[str, float] = field(default_factory=dict)
+    tenor: Tenor | None = None
+    constants: Mapping[str, str] = field(default_factory=dict)
+    spread: str | None = None
+    columns: Mapping[str, str] = field(default_factory=dict)
+    pattern: str | None = None
+    date_order: Literal["ymd", "dmy", "mdy"] | None = None
+    decimal: Literal[".", ","] = "."
+    separator: str | None = None
+    encoding: str = "utf-8"
+    missing: tuple[str, ...] = ()
+    known_after: Tenor | None = None
+    basis: Basis = "trailing 12 months"
+
+
+@dataclass(frozen=True, slots=True)
+class LegColumn:
+    """A leg the user has already built: its column, weight, null slope and role, and its one-period outcomes."""
+
+    name: str
+    column: str
+    weight: float | None = None
+    null: float | None = None
+    role: Role = "other"
+    one_step: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class PanelColumns:
+    """The columns of a `columns` market: entity, signal, controls and legs, each row at its origin date."""
+
+    entity: str | None
+    signal: str
+    legs: tuple[LegColumn, ...]
+    controls: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Inference:
+    """How standard errors are made. `lags` and `factor` of None mean the stated rule of the error kind."""
+
+    errors: Errors = "auto"
+    lags: int | None = None
+    factor: Factor | None = None
+    reference: Reference | None = None
+    confidence: float = 0.95
+    draws: int = 9999
+    seed: int = 7
+
+
+@dataclass(frozen=True, slots=True)
+class Market:
+    """One market of a study: its data, parities, horizons and inference."""
+
+    name: str
+    kind: Kind
+    parities: tuple[str, ...]
+    horizons: tuple[Tenor, ...]
+    interval: Interval
+    home: str | None
+    inference: Inference
+    sources: Mapping[str, tuple[Source, ...]]
+    controls: tuple[Source, ...] = ()
+    panel: PanelColumns | None = None
+    first: str | None = None
+    last: str | None = None
+    maturities: tuple[Tenor, ...] = ()
+    by: By = "pooled"
+    effects: Effects = "entity"
+    missing_maturity: MissingMaturity = "exact"
+    missing_tenor: MissingTenor = "exact"
+    short: Tenor | None = None
+    rho: float | None = None
+    tolerance: float | None = None
+    currency: EquityCurrency = "local"
+    max_gap: int | None = None
+    pegs: tuple[str, ...] = ()
+    leave_out: tuple[str, ...] = ()
+    index_economy: Mapping[str, str] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True)
+class Study:
+    """A whole study file, checked. `economies` maps an economy to its currency; `text` is the file as read."""
+
+    path: Path
+    text: str
+    title: str
+    home: str | None
+    economies: Mapping[str, str]
+    markets: tuple[Market, ...]
