@@ -1,0 +1,1 @@
+"""One set of panel-regression routines on arrays. Nothing here knows of markets."""

@@ -1,0 +1,1 @@
+"""Tables and files. Nothing here computes a statistic."""
