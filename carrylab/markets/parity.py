@@ -31,8 +31,9 @@ class Leg:
 
     `values` (T, N), log units over the whole horizon unless the parity says otherwise. `weight` is its weight in
     the identity (None: no identity, no share), `null` its slope when expected returns are constant (None: no
-    null of its own). `one_step` holds one-period outcomes that add up to the leg when expected returns are
-    constant: (T, N), standing in the row of the period *in which they fall*, or (T, N, H) by origin and step
+    null of its own). `one_step` holds the one-period outcomes that add up to leg - null x signal when expected
+    returns are constant (for the fundamental leg of a two-leg parity: the return's, times minus the ratio of the
+    weights): (T, N), standing in the row of the period *in which they fall*, or (T, N, H) by origin and step
     (step 1 at index 0). `step_weights` (H,) multiplies the outcome of each step; None means one.
     """
 
