@@ -102,7 +102,8 @@ def last_day(ordinals: Ints, interval: Interval) -> Days:
     if interval == "week":
         return (ordinals * 7 + 3).astype("datetime64[D]")
     months = (ordinals + 1) * MONTHS_IN[interval] - 1970 * 12
-    return months.astype("datetime64[M]").astype("datetime64[D]") - np.timedelta64(1, "D")
+    first_of_next = months.astype("datetime64[M]").astype("datetime64[D]").astype(np.int64)
+    return (first_of_next - 1).astype("datetime64[D]")
 
 
 def add(days: Days, tenor: Tenor) -> Days:
@@ -115,7 +116,7 @@ def add(days: Days, tenor: Tenor) -> Days:
         is_end = (stamp + 1).astype("datetime64[M]") > month
         moved = target.astype("datetime64[D]") + (stamp - month.astype("datetime64[D]"))
         stamp = np.where(is_end, length, np.minimum(moved, length))
-    return stamp + np.timedelta64(tenor.days, "D")
+    return (stamp.astype(np.int64) + tenor.days).astype("datetime64[D]")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
