@@ -1,0 +1,5 @@
+"""`python -m carrylab` is the command line."""
+
+from carrylab.cli import main
+
+main()

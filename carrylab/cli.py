@@ -1,0 +1,109 @@
+"""The command line. Each command calls the Python interface and prints; errors are one line and exit code 2."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from carrylab import __version__
+from carrylab.errors import CarrylabError
+
+if TYPE_CHECKING:
+    from carrylab.results import Results
+
+STUDY = click.argument("study", type=click.Path(path_type=Path))
+
+
+class Commands(click.Group):
+    """A group that turns an expected error into its one line and a stop into exit code 130."""
+
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            return super().invoke(ctx)
+        except CarrylabError as wrong:
+            click.echo(str(wrong), err=True)
+            ctx.exit(2)
+        except KeyboardInterrupt:
+            click.echo("Stopped; nothing was written.", err=True)
+            ctx.exit(130)
+
+
+@click.group(cls=Commands, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(__version__, prog_name="carrylab")
+def main() -> None:
+    """Is a price spread paid out as excess return, or does it come true in the fundamental it is about?"""
+    # A console that cannot show a character gets a question mark instead of a crash.
+    for stream in (sys.stdout, sys.stderr):
+        reconfigure: Callable[..., None] | None = getattr(stream, "reconfigure", None)
+        if reconfigure:
+            reconfigure(errors="replace")
+
+
+@main.command()
+@STUDY
+def check(study: Path) -> None:
+    """Read the data of STUDY and print what the load checks found; errors exit with code 2."""
+    import carrylab
+
+    found = carrylab.check(carrylab.read_study(study))
+    for one in found:
+        click.echo(one.line())
+    count = {level: sum(one.level == level for one in found) for level in ("error", "warning", "note")}
+    click.echo(f"{count['error']} errors, {count['warning']} warnings, {count['note']} notes")
+    if count["error"]:
+        sys.exit(2)
+
+
+@main.command()
+@STUDY
+@click.option("--into", type=click.Path(path_type=Path), help="Run folder [default: NAME_results here].")
+@click.option("--audit", is_flag=True, help="Recompute the headline with linearmodels and statsmodels.")
+@click.option("--parquet", is_flag=True, help="Also write findings.parquet (needs pyarrow).")
+@click.option("--width", type=click.IntRange(60, 400), default=100, show_default=True, help="Columns of text.")
+def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int) -> None:
+    """Run STUDY, print the report and write the run folder."""
+    import carrylab
+
+    target = into or Path(f"{study.stem}_results")
+    results = carrylab.run(carrylab.read_study(study), audit=audit, progress=_progress())
+    results.save(target, parquet=parquet, width=width)
+    click.echo(results.report(width))
+    click.echo(f"Run folder: {target}")
+
+
+def _progress() -> Callable[[str], None] | None:
+    if not sys.stderr.isatty():
+        return None
+    return lambda step: click.echo(f"... {step}", err=True)
+
+
+@main.command()
+@STUDY
+@click.option("--market", help="Market name [default: the first].")
+@click.option("--parity", help="Parity [default: the market's first].")
+@click.option("--entity", help="Entity [default: the first with a whole row].")
+@click.option("--date", "date", help="Origin, such as 2010-06 [default: the last whole row].")
+def show(study: Path, market: str | None, parity: str | None, entity: str | None, date: str | None) -> None:
+    """Work one row of STUDY by hand: raw cells, signal, legs and their sum."""
+    import carrylab
+    from carrylab.show import show_row
+
+    click.echo(show_row(carrylab.read_study(study), market=market, parity=parity, entity=entity, date=date))
+
+
+@main.command()
+@click.argument("files", nargs=-1, required=True, type=click.Path(path_type=Path))
+@click.option("--study", type=click.Path(path_type=Path), default=Path("study.toml"), show_default=True)
+def start(files: tuple[Path, ...], study: Path) -> None:
+    """Read the heads of FILES and write a commented study with questions where only you know the answer."""
+    from carrylab.start import start as begin
+
+    if study.exists():
+        raise CarrylabError(f"{study}: exists already; name another file with --study")
+    text = begin(files, study)
+    study.write_text(text, encoding="utf-8", newline="\n")
+    click.echo(f"Wrote {study}. Answer the lines marked 'question', then: carrylab check {study}")
