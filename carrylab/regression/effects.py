@@ -107,7 +107,7 @@ def _first_of_each_part(cross: Floats, here: Bools) -> tuple[Bools, int]:
 
 
 def blocks(sample: Sample, absorbed: Absorbed, weights: Floats) -> Iterator[tuple[slice, Floats, Floats]]:
-    """Rows after the effects are out, a block of dates at a time: (dates, x (., N, K), y (., N, L)), zero outside the mask."""
+    """Rows after the effects are out, zero outside the mask, by blocks: dates, x (., N, K), y (., N, L)."""
     used = np.flatnonzero(sample.mask.any(axis=1) & (weights > 0))
     k = sample.x.shape[2]
     step = max(1, BLOCK // (sample.mask.shape[1] * absorbed.entity.shape[1]))

@@ -21,10 +21,12 @@ class Estimate:
 
     `terms` are the sample's K terms and "const", the grand mean of y - x b. `coefficients` (K+1, L).
     `influence` (T, K+1, L): each date's contribution to the estimation error, before any finite-sample factor;
-    zero on unused dates. `r2` (L,): within where there are effects, centred where there are none. `bread`
-    (K+1, K+1): inverse of the weighted moments of terms and constant. `squares` (L, L): weighted cross products
-    of the residuals. `weights` (T,) as used. `means` (K,): weighted grand means of the terms. `parameters`
-    counts slopes, constant and absorbed effects. `first` and `last` are the outermost used rows.
+    zero on unused dates. `r2` (L,): within where there are effects, centred where there are none; NaN for a leg
+    that does not vary. `bread` (K+1, K+1): inverse of the weighted moments of terms and constant. `squares`
+    (L, L): weighted cross products of the residuals. `weights` (T,) as used, `total` their sum over rows.
+    `means` (K,): weighted grand means of the terms. `absorbed`: what the effects subtract. `n_obs` rows of
+    positive weight. `parameters` counts slopes, constant and absorbed effects. `first` and `last` are the
+    outermost used rows.
     """
 
     terms: tuple[str, ...]
@@ -36,6 +38,7 @@ class Estimate:
     bread: Floats
     squares: Floats
     weights: Floats
+    total: float
     means: Floats
     absorbed: Absorbed
     n_obs: int
@@ -87,6 +90,7 @@ def fit(sample: Sample, *, effects: Effects, weights: Floats | None = None) -> E
         bread=solved.bread,
         squares=solved.squares,
         weights=weights,
+        total=solved.total,
         means=solved.means,
         absorbed=absorbed,
         n_obs=n_obs,
@@ -120,6 +124,7 @@ class _Solved:
     r2: Floats
     bread: Floats
     squares: Floats
+    total: float
     means: Floats
 
 
@@ -141,6 +146,7 @@ def _solve(sample: Sample, effects: Effects, absorbed: Absorbed, weights: Floats
         r2=_explained(np.diag(squares), np.diag(moments.yy)),
         bread=bread,
         squares=squares,
+        total=total,
         means=means,
     )
 

@@ -12,7 +12,7 @@ import numpy.typing as npt
 Floats = npt.NDArray[np.float64]
 Ints = npt.NDArray[np.int64]
 Bools = npt.NDArray[np.bool_]
-Array = TypeVar("Array", bound=npt.NDArray[np.generic])
+Array = TypeVar("Array", Floats, Ints, Bools)
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -67,7 +67,7 @@ def make_sample(
     arrays of the sample are read-only.
     """
     here, there = np.isfinite(x), np.isfinite(y)
-    mask = here.all(axis=2) & there.all(axis=2)
+    mask: Bools = np.logical_and(here.all(axis=2), there.all(axis=2))
     standing = np.concatenate([here.sum(axis=0), there.sum(axis=0)], axis=1).astype(np.int64)
     del here, there
     return Sample(
