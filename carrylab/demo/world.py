@@ -140,15 +140,16 @@ def crash_exposure() -> Floats:
 def pegged_spot(rng: np.random.Generator, change: Floats) -> Floats:
     """Log price of the pegged currency, (T,): within .5% of the peg, a fall, then free."""
     breaks = int((np.datetime64(PEG_BREAKS) - START).astype(int))
-    inside = np.clip(autoregression(0.8, 0.001 * rng.standard_normal(breaks)), -0.005, 0.005)
+    inside: Floats = np.clip(autoregression(0.8, 0.001 * rng.standard_normal(breaks)), -0.005, 0.005)
     free = change[breaks:].copy()
     free[0] = -PEG_FALL
-    return np.concatenate([inside, np.cumsum(free)]) + np.log(ECONOMIES[PEGGED].spot)
+    spot: Floats = np.log(ECONOMIES[PEGGED].spot) + np.concatenate([inside, np.cumsum(free)])
+    return spot
 
 
 def basis(rng: np.random.Generator) -> Floats:
     """Gap of forwards to covered parity, (T, N, 3): one basis point a year, so that parity holds but for noise."""
-    gap = autoregression(0.9, 0.00005 * rng.standard_normal((MONTHS, len(CODES), 1)))
+    gap: Floats = autoregression(0.9, 0.00005 * rng.standard_normal((MONTHS, len(CODES), 1)))
     gap[:, HOME] = 0.0
     yearly: Floats = gap * np.array(TENORS) / 12
     return yearly
@@ -179,9 +180,8 @@ def equities(rng: np.random.Generator, recession: Bools) -> tuple[Floats, Floats
     paid = rate * dividend_months(T + 11)
     dividend: Floats = np.lib.stride_tricks.sliding_window_view(paid, 12, axis=0).sum(axis=-1)
     price: Floats = dividend / ratio
-    gross = np.ones((T, N))
-    gross[1:] = (price[1:] + paid[12:]) / price[:-1]
-    total_return: Floats = 1000 * np.cumprod(gross, axis=0)
+    total_return = np.full((T, N), 1000.0)
+    total_return[1:] *= np.cumprod((price[1:] + paid[12:]) / price[:-1], axis=0)
     return price, dividend, total_return
 
 
