@@ -36,8 +36,7 @@ class Clustered:
 
 def classical(estimate: Estimate) -> Floats:
     """Covariance (m, m) with equal, uncorrelated errors: sum w e e' / n times the bread, before the factor n/(n-k)."""
-    covariance: Floats = np.kron(estimate.bread, estimate.squares / estimate.n_obs)
-    return covariance
+    return np.asarray(np.kron(estimate.bread, estimate.squares / estimate.n_obs), dtype=np.float64)
 
 
 def meats(sample: Sample, estimate: Estimate) -> Meats:

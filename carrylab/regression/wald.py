@@ -130,6 +130,6 @@ def _project(basis: Floats, target: Floats) -> tuple[Floats, float]:
     """Coefficients of the target on the basis and the length of what is left."""
     if not basis.shape[1]:
         return np.zeros(0), float(np.sqrt(target @ target))
-    found: Floats = np.linalg.lstsq(basis, target, rcond=None)[0]
+    found = np.asarray(np.linalg.lstsq(basis, target, rcond=None)[0], dtype=np.float64)
     rest = target - basis @ found
     return found, float(np.sqrt(rest @ rest))
