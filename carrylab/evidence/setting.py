@@ -1,0 +1,89 @@
+"""One fitted regression with its errors and the words that place it in the findings."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+
+from carrylab.markets.parity import Parity
+from carrylab.regression.covariance import ErrorOptions, Errors, standard_errors
+from carrylab.regression.fit import Estimate
+from carrylab.regression.law import statistics
+from carrylab.regression.sample import Floats, Sample
+
+Row = dict[str, Any]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Fit:
+    """One group of one parity: sample, estimate and errors.
+
+    `headline` are the errors the study chose. `away` are valid away from the null as well: equal to the headline,
+    or cosines where the headline imposes the null of no premium.
+    """
+
+    parity: Parity
+    group: str
+    sample: Sample
+    estimate: Estimate
+    headline: Errors
+    away: Errors
+    confidence: float
+    name: str = "all"
+
+    @property
+    def weights(self) -> Floats:
+        """Weights of the legs (L,), NaN where a leg has none."""
+        return np.array([np.nan if leg.weight is None else leg.weight for leg in self.parity.legs])
+
+    @property
+    def has_identity(self) -> bool:
+        """Every leg has a weight, so shares exist."""
+        return not np.isnan(self.weights).any()
+
+    def leg_of(self, role: str) -> int | None:
+        """Number of the first leg with this role, or None."""
+        roles = [leg.role for leg in self.parity.legs]
+        return roles.index(role) if role in roles else None
+
+    def place(self) -> Row:
+        """The columns that say where a row belongs and what it rests on."""
+        parity, estimate = self.parity, self.estimate
+        return {
+            "market": parity.market,
+            "parity": parity.name,
+            "horizon": str(parity.horizon),
+            "interval": parity.calendar.interval,
+            "group": self.group,
+            "sample": self.name,
+            "n_dates": estimate.n_dates,
+            "n_entities": estimate.n_entities,
+            "n_obs": estimate.n_obs,
+            "first": parity.calendar.label(estimate.first),
+            "last": parity.calendar.label(estimate.last),
+        }
+
+
+def errors_of(sample: Sample, estimate: Estimate, options: ErrorOptions) -> tuple[Errors, Errors]:
+    """The errors asked for, and those that hold away from the null of no premium too."""
+    headline = standard_errors(sample, estimate, options)
+    if "one-period" not in headline.kinds:
+        return headline, headline
+    return headline, standard_errors(sample, estimate, replace(options, kind="cosine", factor=None, reference=None))
+
+
+def tested(value: float, error: float, null: float, df: float, confidence: float) -> Row:
+    """The columns of an estimate with its error, test and interval."""
+    found = statistics(value, error, null, df, confidence)
+    return {
+        "estimate": value,
+        "std_error": error,
+        "statistic": float(found.statistic),
+        "df": df,
+        "p_value": float(found.p_value),
+        "lower": float(found.lower),
+        "upper": float(found.upper),
+        "null": null,
+    }

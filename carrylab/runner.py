@@ -1,0 +1,252 @@
+"""run(study) -> Results: the straight line through every layer, and the only module that knows them all."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from carrylab.audit import Audit
+from carrylab.audit import audit as audit_samples
+from carrylab.data.asof import as_of
+from carrylab.data.checks import Check, check_market
+from carrylab.data.read import MarketData, Table, read_market
+from carrylab.errors import DataError, StudyError
+from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
+from carrylab.evidence.across import across_rows
+from carrylab.evidence.latest import latest_rows
+from carrylab.evidence.setting import Fit, Row, errors_of
+from carrylab.evidence.shares import share_rows
+from carrylab.evidence.summary import summary_rows
+from carrylab.findings import to_frame
+from carrylab.markets import MARKETS
+from carrylab.markets.parity import Leg, Parity, identity
+from carrylab.markets.proof import identity_check
+from carrylab.options import Inference, Market, Study
+from carrylab.regression.covariance import ErrorOptions
+from carrylab.regression.fit import fit
+from carrylab.regression.sample import Floats, OneStep, Sample, make_sample, take
+from carrylab.results import Results
+
+RHO_STEP = 0.02
+Progress = Callable[[str], None]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Built:
+    """One market read, checked and turned into parities."""
+
+    market: Market
+    data: MarketData
+    parities: tuple[Parity, ...]
+    checks: tuple[Check, ...]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Fitted:
+    """Every fit of one market, and the terms (T, N, K) of each parity with holes."""
+
+    fits: tuple[Fit, ...]
+    samples: tuple[tuple[str, Sample], ...]
+    rows: tuple[Row, ...]
+
+
+def check(study: Study) -> list[Check]:
+    """What the load checks and the identities of every market found."""
+    return [found for market in study.markets for found in build(market, study.economies).checks]
+
+
+def run(study: Study, *, audit: bool = False, progress: Progress | None = None) -> Results:
+    """Run a study through every layer; errors of the checks raise DataError before anything is estimated."""
+    say = progress or (lambda _step: None)
+    clock, timings = time.perf_counter(), {}
+    built = []
+    for market in study.markets:
+        say(f"reading {market.name}")
+        built.append(build(market, study.economies))
+    timings["read, check and build"] = time.perf_counter() - clock
+    refuse_errors(built)
+    clock = time.perf_counter()
+    fitted = []
+    for one in built:
+        say(f"estimating {one.market.name}")
+        fitted.append(estimate(one, study.economies))
+    rows = [row for one, done in zip(built, fitted, strict=True) for row in (*_accounts(one), *done.rows)]
+    rows += _across([fit for done in fitted for fit in done.fits])
+    timings["estimate"] = time.perf_counter() - clock
+    audited = _audited(built, fitted, say) if audit else None
+    return Results(
+        study=study,
+        findings=to_frame(rows),
+        checks={one.market.name: one.checks for one in built},
+        parities=tuple(parity for one in built for parity in one.parities),
+        audit=audited,
+        timings=timings,
+    )
+
+
+def build(market: Market, economies: Mapping[str, str]) -> Built:
+    """Read one market, build its parities and run all its checks."""
+    data = read_market(market)
+    checks = check_market(data, economies)
+    if any(one.level == "error" for one in checks):
+        return Built(market, data, (), tuple(checks))
+    parities = tuple(_kept(parity, market) for parity in MARKETS[market.kind](data, economies))
+    proofs = [identity_check(parity) for parity in parities]
+    return Built(market, data, parities, (*checks, *proofs))
+
+
+def refuse_errors(built: list[Built]) -> None:
+    """Raise DataError with the line of every error the checks found."""
+    lines = [one.line() for market in built for one in market.checks if one.level == "error"]
+    if lines:
+        raise DataError("\n".join(lines))
+
+
+def _kept(parity: Parity, market: Market) -> Parity:
+    """The parity without the entities the study leaves out."""
+    out = set(market.leave_out)
+    stay = [i for i, e in enumerate(parity.entities) if not out & {e.name, e.economy, e.currency, e.index}]
+    if len(stay) == len(parity.entities):
+        return parity
+    if not stay:
+        raise StudyError(f"market {market.name!r}, key leave_out: {sorted(out)} leaves no entity; leave out fewer")
+    return replace(
+        parity,
+        entities=tuple(parity.entities[i] for i in stay),
+        signal=parity.signal[:, stay],
+        legs=tuple(_columns(leg, stay) for leg in parity.legs),
+    )
+
+
+def _columns(leg: Leg, stay: list[int]) -> Leg:
+    one_step = None if leg.one_step is None else leg.one_step[:, stay]
+    return replace(leg, values=leg.values[:, stay], one_step=one_step)
+
+
+def terms_of(parity: Parity, data: MarketData) -> tuple[tuple[str, ...], Floats]:
+    """Names and values (T, N, K) of the signal and the added predictors, NaN for holes."""
+    named = {"signal": parity.signal}
+    named |= {table.source.role: _control(table, parity) for table in data.controls}
+    return tuple(named), np.stack(list(named.values()), axis=2)
+
+
+def _control(table: Table, parity: Parity) -> Floats:
+    """An added predictor (T, N), by date or by the entity's own code."""
+    keys = [key for key in table.keys if key not in ("maturity", "tenor")]
+    codes = [entity.group(keys[0]) for entity in parity.entities] if keys else [""] * len(parity.entities)
+    return as_of(parity.calendar, table, codes)
+
+
+def sample_of(parity: Parity, data: MarketData) -> tuple[Sample, Floats]:
+    """The sample of one parity with all its entities, and the terms with their holes."""
+    names, terms = terms_of(parity, data)
+    steps = np.where(parity.window.ends >= 0, parity.window.ends - np.arange(len(parity.calendar)), 0)
+    sample = make_sample(
+        terms,
+        np.stack([leg.values for leg in parity.legs], axis=2),
+        terms=names,
+        legs=[leg.name for leg in parity.legs],
+        steps=steps,
+        overlap=parity.window.overlap,
+        one_step=[_one_step(leg, int(steps.max())) for leg in parity.legs],
+        label=f"{parity.market}, {parity.name}, {parity.horizon}",
+    )
+    return sample, terms
+
+
+def _one_step(leg: Leg, steps: int) -> OneStep | None:
+    if leg.one_step is None:
+        return None
+    weights = np.ones(steps) if leg.step_weights is None else leg.step_weights
+    return OneStep(leg.one_step, weights)
+
+
+def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
+    """Fit every parity of one market, pooled and by group, and write its rows."""
+    fits: list[Fit] = []
+    samples: list[tuple[str, Sample]] = []
+    rows: list[Row] = []
+    for parity in built.parities:
+        sample, terms = sample_of(parity, built.data)
+        found = list(_fits(parity, sample, built.market))
+        rows += [row for one in found for row in (*share_rows(one), *summary_rows(one))]
+        rows += regression_ledger_rows(found[0])
+        rows += latest_rows(found[0], terms)
+        rows += _other_rho(parity, built, economies)
+        fits += found
+        samples += [(one.sample.label, one.sample) for one in found]
+    return Fitted(tuple(fits), tuple(samples), tuple(rows))
+
+
+def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:
+    """The pooled fit first, then one by group where the study asks for groups."""
+    yield _fit(parity, sample, "pooled", market)
+    if market.by == "pooled":
+        return
+    labels = [entity.group(market.by) for entity in parity.entities]
+    for label in dict.fromkeys(labels):
+        columns = [i for i, own in enumerate(labels) if own == label]
+        part = take(sample, columns, label=f"{sample.label}, {market.by} {label}")
+        yield _fit(parity, part, label, market)
+
+
+def _fit(parity: Parity, sample: Sample, group: str, market: Market, name: str = "all") -> Fit:
+    options = error_options(market.inference)
+    found = fit(sample, effects=market.effects)
+    headline, away = errors_of(sample, found, options)
+    return Fit(parity, group, sample, found, headline, away, market.inference.confidence, name)
+
+
+def error_options(inference: Inference) -> ErrorOptions:
+    """The study's choice of errors as the routines take it."""
+    return ErrorOptions(inference.errors, inference.lags, inference.factor, inference.reference)
+
+
+def _other_rho(parity: Parity, built: Built, economies: Mapping[str, str]) -> list[Row]:
+    """The resolved premium share again at rho a little lower and higher."""
+    if parity.rho is None:
+        return []
+    rows: list[Row] = []
+    for step in (-RHO_STEP, RHO_STEP):
+        other = replace(built.market, rho=parity.rho + step, parities=(parity.name,), horizons=(parity.horizon,))
+        again = _kept(MARKETS[other.kind](replace(built.data, market=other), economies)[0], other)
+        found = _fit(again, sample_of(again, built.data)[0], "pooled", other, f"rho {step:+.2f}")
+        rows += [row for row in share_rows(found) if row["term"] == "resolved premium share"]
+    return rows
+
+
+def _accounts(built: Built) -> list[Row]:
+    rows = [*ledger_rows(built.data), *check_rows(built.market.name, built.checks)]
+    for parity in built.parities:
+        proof = identity(parity)
+        rows += [identity_row(parity, proof)] if proof else []
+    return rows
+
+
+def _across(fits: list[Fit]) -> list[Row]:
+    """Compare markets on carry, and on each market's own spread, where horizon and interval are the same."""
+    rows: list[Row] = []
+    pooled = [fit for fit in fits if fit.group == "pooled" and fit.has_identity and fit.leg_of("return") is not None]
+    own = {fit.parity.market: fit.parity.name for fit in reversed(pooled)}
+    for what, chosen in (
+        ("carry", [fit for fit in pooled if fit.parity.name == "carry"]),
+        ("each market's own spread", [fit for fit in pooled if fit.parity.name == own[fit.parity.market]]),
+    ):
+        for horizon, interval in dict.fromkeys(
+            (fit.parity.horizon, fit.parity.calendar.interval) for fit in chosen
+        ):
+            same = [f for f in chosen if (f.parity.horizon, f.parity.calendar.interval) == (horizon, interval)]
+            rows += across_rows(same, what)
+    return rows
+
+
+def _audited(built: list[Built], fitted: list[Fitted], say: Progress) -> Audit:
+    found = []
+    for one, done in zip(built, fitted, strict=True):
+        say(f"auditing {one.market.name}")
+        found.append(audit_samples(done.samples, one.market.effects, error_options(one.market.inference)))
+    not_compared = dict.fromkeys(text for part in found for text in part.not_compared)
+    return Audit(tuple(row for part in found for row in part.comparisons), tuple(not_compared))
