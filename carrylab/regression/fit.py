@@ -68,7 +68,7 @@ def fit(sample: Sample, *, effects: Effects, weights: Floats | None = None) -> E
 
     With x~ and y~ the rows after the effects are out: b = A^-1 sum w x~ y~, A = sum w x~ x~', influence of date t
     A^-1 w_t sum_i x~_it e_it; for the constant w_t sum_i e_it / sum w - means' (influence of b), which without
-    effects is exactly ordinary least squares (Frisch and Waugh 1933).
+    effects is exactly ordinary least squares (Frisch and Waugh 1933) and with effects holds the effects fixed.
     `weights` (T,) are non-negative date weights: a subsample, a window or bootstrap counts; None means one.
     Raises SampleError, one line, where the sample cannot carry the regression.
     """
