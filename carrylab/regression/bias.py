@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 from dataclasses import dataclass
 
@@ -10,7 +11,7 @@ from scipy.special import ndtr
 
 from carrylab.regression.effects import absorb, blocks
 from carrylab.regression.fit import Estimate
-from carrylab.regression.sample import Bools, Floats, Sample
+from carrylab.regression.sample import Bools, Floats, Ints, Sample
 
 PERSISTENCE_CAP = 0.999
 FEW_WINDOWS, VERY_FEW_WINDOWS = 20, 10
@@ -23,7 +24,8 @@ class Bias:
 
     `persistence`: pooled AR(1) of the signal, bias-corrected; `capped` where it reached .999. `gamma`: slope of the
     leg's one-period shock on the signal's shock. `bias` of the slope, `ratio` bias over standard error, `size`
-    predicted true size of the nominal two-sided 5% test.
+    predicted true size of the nominal two-sided 5% test. Where `problem` says why nothing can be predicted, all
+    are NaN.
     """
 
     persistence: float
@@ -32,6 +34,13 @@ class Bias:
     bias: float
     ratio: float
     size: float
+    problem: str = ""
+
+
+NO_NEIGHBOURS = (
+    "the signal never stands on two dates in a row, so neither its persistence nor the bias can be predicted"
+)
+UNKNOWN = Bias(math.nan, False, math.nan, math.nan, math.nan, math.nan, NO_NEIGHBOURS)
 
 
 def predicted_size(ratio: float) -> float:
@@ -76,6 +85,8 @@ def predicted_bias(sample: Sample, estimate: Estimate, leg: int, std_error: floa
     entities = effective_entities(sample, estimate, leg)
     mean_share = 1.0 if estimate.effects in ("entity", "both") else 1.0 / entities
     lagged = rows[1:] & rows[:-1]
+    if not lagged.any():
+        return UNKNOWN
     raw = float((signal[1:] * signal[:-1])[lagged].sum() / (signal[:-1] ** 2)[lagged].sum())
     corrected = raw + (mean_share * (1 + raw) + 2 * raw / entities) / length
     phi = min(corrected, PERSISTENCE_CAP)
@@ -83,7 +94,7 @@ def predicted_bias(sample: Sample, estimate: Estimate, leg: int, std_error: floa
     gamma = _gamma(sample, estimate, leg, shocks)
     steps = int(np.median(sample.steps[rows.any(axis=1)]))
     bias = -gamma * (mean_share * steps * (1 + phi) + 2 / entities * (phi ** np.arange(1, steps + 1)).sum()) / length
-    ratio = bias / std_error if std_error > 0 else 0.0
+    ratio = bias / std_error if std_error > 0 else math.nan
     return Bias(phi, corrected > PERSISTENCE_CAP, gamma, bias, ratio, predicted_size(ratio))
 
 
@@ -116,7 +127,7 @@ def _gamma(sample: Sample, estimate: Estimate, leg: int, shocks: Floats) -> floa
     return float(outcome.weights.mean()) * _slope(one, shocks)
 
 
-def _windowed(shocks: Floats, steps: np.typing.NDArray[np.int64]) -> Floats:
+def _windowed(shocks: Floats, steps: Ints) -> Floats:
     """Sum of the shocks that fall inside the window of each origin, NaN where one is missing."""
     total = np.zeros_like(shocks)
     for step in range(int(steps.max())):

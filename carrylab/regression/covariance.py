@@ -145,32 +145,6 @@ def scaled(estimate: Estimate, factor: Factor) -> Floats:
     return estimate.influence * math.sqrt(_factor_value(estimate, factor))
 
 
-def combination_error(sample: Sample, estimate: Estimate, gradient: Floats, options: ErrorOptions) -> Errors:
-    """The error of sum over legs of gradient (L,) x slope of the signal, as Errors of one coefficient.
-
-    Where the legs that take part have errors of one kind their joint covariance serves; where only some have
-    one-period outcomes, all of them take cosines.
-    """
-    errors = standard_errors(sample, estimate, options)
-    legs = np.flatnonzero(gradient)
-    if len({errors.kinds[leg] for leg in legs}) > 1:
-        errors = standard_errors(sample, estimate, replace(options, kind="cosine", factor=None, reference=None))
-    slopes = errors.covariance[np.ix_(legs, legs)]
-    variance = max(float(gradient[legs] @ slopes @ gradient[legs]), 0.0)
-    pick = legs[0] if len(legs) else 0
-    return Errors(
-        covariance=np.full((1, 1), variance),
-        std_error=np.full((1, 1), math.sqrt(variance)),
-        df=errors.df[pick : pick + 1],
-        kinds=errors.kinds[pick : pick + 1],
-        lags=errors.lags[pick : pick + 1],
-        factors=errors.factors[pick : pick + 1],
-        references=errors.references[pick : pick + 1],
-        words=errors.words[pick : pick + 1],
-        warnings=errors.warnings,
-    )
-
-
 def _require_allowed(options: ErrorOptions, overlap: int) -> tuple[str, ...]:
     """Refuse a lag below the overlap, and a clustered factor without clusters; a forced short lag is a warning."""
     kind, lags = options.kind, options.lags

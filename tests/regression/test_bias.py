@@ -98,3 +98,14 @@ def test_windows_are_counted() -> None:
     assert window_warning(480, 0, ["bartlett"]) == ()
     assert window_warning(200, 11, ["cosine"]) == ("200 dates hold only 16 independent windows of 12 periods",)
     assert "do not rely on their p-values" in window_warning(480, 59, ["bartlett"])[0]
+
+
+def test_a_signal_without_neighbours_has_no_persistence_to_estimate() -> None:
+    # a yearly signal on a monthly calendar
+    rng = np.random.default_rng(0)
+    x, y = rng.normal(size=(120, 2)), rng.normal(size=(120, 2))
+    x[np.arange(120) % 12 > 0] = np.nan
+    sample = sample_of(x, y, None, 1)
+    found = predicted_bias(sample, fit(sample, effects="entity"), 0, 1.0)
+    assert np.isnan(found.ratio)
+    assert "never stands on two dates in a row" in found.problem

@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from carrylab.errors import InferenceError
-from carrylab.regression.covariance import ERRORS, ErrorOptions, combination_error, scaled, standard_errors
+from carrylab.regression.covariance import ERRORS, ErrorOptions, scaled, standard_errors
 from carrylab.regression.fit import fit
 from carrylab.regression.law import critical, statistics
 from carrylab.regression.longrun import longrun
@@ -134,19 +134,6 @@ def test_few_windows_and_few_clusters_are_said() -> None:
     short = random_sample(0)
     said = standard_errors(short, fit(short, effects="entity"), ErrorOptions("clustered: entity")).warnings
     assert any("rests on 6 clusters" in text for text in said)
-
-
-def test_combination_takes_one_kind_for_all_legs_that_take_part() -> None:
-    sample = two_legs()
-    estimate = fit(sample, effects="entity")
-    alone = combination_error(sample, estimate, np.array([1.0, 0.0]), ErrorOptions())
-    assert alone.kinds == ("one-period",)
-    both = combination_error(sample, estimate, np.array([1.0, 0.5]), ErrorOptions())
-    assert both.kinds == ("cosine",)
-    slopes = longrun(estimate.influence[:, 0] @ np.array([[1.0], [0.5]]), "cosine", lags=3)
-    assert both.std_error[0, 0] == pytest.approx(np.sqrt(slopes.covariance[0, 0]))
-    total = combination_error(sample, estimate, np.array([1.0, 1.0]), ErrorOptions("bartlett"))
-    assert total.std_error[0, 0] == pytest.approx(0, abs=1e-8)
 
 
 def test_one_entity_is_the_time_series_formula() -> None:
