@@ -1,0 +1,264 @@
+"""Zero-coupon bonds: four yield parities and carry.
+
+p(n) = -n y(n) is the log price of the n-year bond, h or m the holding period in years. Each leg is computed from
+prices on its own.
+forward-spot (Fama and Bliss 1987, AER 77:680): p_t(n-h) - p_t(n) - h y_t(h) = excess return + rise of the (n-h) rate.
+forward-spot-far: the same forward rate against the k-year rate n-k years ahead, and against the return held so long.
+yield-spread (Campbell and Shiller 1991, REStud 58:495): m/(n-m) [y_t(n) - y_t(m)] = long-yield rise + return/(n-m).
+yield-spread-to-maturity (the same paper): y_t(n) - y_t(m) = average future m-rate less today's + average return.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+
+import numpy as np
+
+from carrylab.data.calendar import Calendar, Floats, Tenor, Window, lead, window
+from carrylab.data.panel import curves
+from carrylab.data.read import MarketData
+from carrylab.errors import StudyError
+from carrylab.markets.curves import YieldCurves
+from carrylab.markets.parity import Entity, Leg, Parity
+from carrylab.markets.tenors import step_tenor
+
+CARRY_NOTE = "for a zero-coupon bond the return on an unchanged curve is the forward-spot spread"
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Built:
+    """Signal and legs (T, N) of one maturity: each leg's name, role, weight and null beside its values."""
+
+    signal: Floats
+    legs: tuple[Leg, ...]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Bonds:
+    """The curves of one market with what its recipes need: calendar, largest gap, `short` and the timing."""
+
+    data: MarketData
+    curves: YieldCurves
+    economies: Mapping[str, str]
+
+    @property
+    def calendar(self) -> Calendar:
+        """The market's calendar."""
+        return self.data.calendar
+
+    def window(self, horizon: Tenor) -> Window:
+        """Where the outcomes of one horizon stand."""
+        return window(self.calendar, horizon, self.data.market.max_gap)
+
+
+def parities(data: MarketData, economies: Mapping[str, str]) -> list[Parity]:
+    """Every bond parity of the study: one a horizon, and one a maturity for the two distant ones."""
+    quoted = curves(data.tables["zero_yields"], data.calendar, "economy", "maturity")
+    bonds = Bonds(data, YieldCurves(quoted, data.market), economies)
+    found = []
+    for name in data.market.parities:
+        if name in DISTANT:
+            found += [_distant(bonds, name, n) for n in _maturities(bonds, data.market.short)]
+        else:
+            found += [_near(bonds, name, horizon) for horizon in data.market.horizons]
+    return found
+
+
+def _maturities(bonds: Bonds, above: Tenor | None) -> tuple[Tenor, ...]:
+    """The maturities of the study, or all quoted ones above the holding period."""
+    market = bonds.data.market
+    floor = above.years if above is not None else 0.0
+    if not market.maturities:
+        return tuple(tenor for tenor in bonds.curves.quoted.tenors if tenor.years > floor + 1e-9)
+    for n in market.maturities:
+        if n.years <= floor + 1e-9:
+            raise StudyError(
+                f"market {market.name!r}, key maturities: {str(n)!r} is not longer than {above}; allowed are longer "
+                "maturities, as the bond must live on when the holding period ends"
+            )
+    return market.maturities
+
+
+def _near(bonds: Bonds, name: str, h: Tenor) -> Parity:
+    maturities = _maturities(bonds, h)
+    at = bonds.window(h)
+    built = [NEAR[name](bonds, n, h, at) for n in maturities]
+    return _parity(bonds, (name, h, at), maturities, built)
+
+
+def _distant(bonds: Bonds, name: str, n: Tenor) -> Parity:
+    short = bonds.data.market.short
+    if short is None:
+        raise StudyError(f"market {bonds.data.market.name!r}: the key short is missing")
+    horizon = n - short
+    return _parity(bonds, (name, horizon, bonds.window(horizon)), (n,), [DISTANT[name](bonds, n, short)])
+
+
+def _parity(
+    bonds: Bonds, what: tuple[str, Tenor, Window], maturities: tuple[Tenor, ...], built: list[Built]
+) -> Parity:
+    """Stack the maturities side by side: entities are economy by maturity."""
+    name, horizon, at = what
+    codes = bonds.curves.quoted.codes
+    notes = [CARRY_NOTE] if name == "carry" else []
+    if bonds.curves.used:
+        filled = ", ".join(sorted(bonds.curves.used))
+        notes.append(f"maturities not quoted ({filled}) are filled: {bonds.data.market.missing_maturity}")
+    return Parity(
+        market=bonds.data.market.name,
+        name=name,
+        horizon=horizon,
+        calendar=bonds.calendar,
+        window=at,
+        entities=tuple(
+            Entity(f"{code} {n}", code, bonds.economies.get(code, ""), str(n)) for n in maturities for code in codes
+        ),
+        signal_name=SIGNALS[name],
+        signal=np.concatenate([part.signal for part in built], axis=1),
+        legs=tuple(_side_by_side([part.legs[at_leg] for part in built]) for at_leg in range(len(built[0].legs))),
+        notes=tuple(notes),
+    )
+
+
+def _side_by_side(legs: list[Leg]) -> Leg:
+    first = legs[0]
+    steps = [leg.one_step for leg in legs if leg.one_step is not None]
+    one_step = np.concatenate(steps, axis=1) if len(steps) == len(legs) else None
+    values = np.concatenate([leg.values for leg in legs], axis=1)
+    return Leg(first.name, first.role, values, first.weight, first.null, one_step)
+
+
+def forward_spot(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Built:
+    """Forward-spot spread against the h-period return and the rise of the (n-h) rate."""
+    price, rest = bonds.curves.price, n - h
+    riskless = h.years * bonds.curves.yields(h)
+    later = lead(bonds.curves.yields(rest), at)
+    steps = monthly_returns(bonds, n, h, at)
+    return Built(
+        price(rest) - price(n) - riskless,
+        (
+            Leg("excess return", "return", -rest.years * later - price(n) - riskless, 1.0, 0.0, steps),
+            Leg(
+                "rate rise", "fundamental", rest.years * (later - bonds.curves.yields(rest)), 1.0, 1.0, _negated(steps)
+            ),
+        ),
+    )
+
+
+def carry(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Built:
+    """Return on an unchanged curve against the return and the price change beyond it (weight -1)."""
+    found = forward_spot(bonds, n, h, at)
+    rest = n - h
+    change = lead(bonds.curves.price(rest), at) - bonds.curves.price(rest)
+    excess = found.legs[0]
+    return Built(
+        found.signal,
+        (excess, Leg("price change beyond the carry", "fundamental", change, -1.0, -1.0, excess.one_step)),
+    )
+
+
+def yield_spread(bonds: Bonds, n: Tenor, m: Tenor, at: Window) -> Built:
+    """Scaled yield spread against the rise of the long yield and the return per year of life left."""
+    rest = n - m
+    scale = m.years / rest.years
+    later = lead(bonds.curves.yields(rest), at)
+    excess = -rest.years * later - bonds.curves.price(n) - m.years * bonds.curves.yields(m)
+    steps = monthly_returns(bonds, n, m, at)
+    share = None if steps is None else steps / rest.years
+    return Built(
+        scale * (bonds.curves.yields(n) - bonds.curves.yields(m)),
+        (
+            Leg("excess return", "return", excess / rest.years, 1.0, 0.0, share),
+            Leg("long-rate rise", "fundamental", later - bonds.curves.yields(n), 1.0, 1.0, _negated(share)),
+        ),
+    )
+
+
+def forward_spot_far(bonds: Bonds, n: Tenor, k: Tenor) -> Built:
+    """Forward-spot spread against the k-year rate n-k years ahead; the return is held as long."""
+    price, rest = bonds.curves.price, n - k
+    at = bonds.window(rest)
+    later = lead(bonds.curves.yields(k), at)
+    excess = -k.years * later - price(n) - rest.years * bonds.curves.yields(rest)
+    rise = k.years * (later - bonds.curves.yields(k))
+    return Built(
+        price(rest) - price(n) - k.years * bonds.curves.yields(k),
+        (
+            Leg("excess return", "return", excess, 1.0, 0.0),
+            Leg("rate rise", "fundamental", rise, 1.0, 1.0),
+        ),
+    )
+
+
+def yield_spread_to_maturity(bonds: Bonds, n: Tenor, m: Tenor) -> Built:
+    """Yield spread against the average of future m-rates and the average return over rolling m-bonds."""
+    k = round(n.years / m.years)
+    if abs(k * m.years - n.years) > 1e-9:
+        raise StudyError(
+            f"market {bonds.data.market.name!r}: maturity {n} is no whole number of {m}; allowed with "
+            "yield-spread-to-maturity are multiples of short"
+        )
+    short = bonds.curves.yields(m)
+    average = np.zeros_like(short)
+    returns = np.zeros_like(short)
+    for i in range(k):
+        average = average + _ahead(bonds, short, m.times(i)) / k
+        if i < k - 1:
+            left = n - m.times(i)
+            sold = _ahead(bonds, bonds.curves.price(left - m), m.times(i + 1))
+            bought = _ahead(bonds, bonds.curves.price(left), m.times(i))
+            returns = returns + (sold - bought - m.years * _ahead(bonds, short, m.times(i))) / n.years
+    return Built(
+        bonds.curves.yields(n) - short,
+        (
+            Leg("average excess return", "return", returns, 1.0, 0.0),
+            Leg("average short-rate rise", "fundamental", average - short, 1.0, 1.0),
+        ),
+    )
+
+
+def _ahead(bonds: Bonds, values: Floats, by: Tenor) -> Floats:
+    return values if by == Tenor() else lead(values, bonds.window(by))
+
+
+def _negated(steps: Floats | None) -> Floats | None:
+    return None if steps is None else -steps
+
+
+def monthly_returns(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Floats | None:
+    """Excess returns of the bought bond period by period, (T, N, H) by origin and step; None where they are unknown.
+
+    In step s the n-bond has n - (s-1) steps left and the h-bond h - (s-1): its return less that of the h-bond. They
+    add up exactly to the excess return over h.
+    """
+    step = step_tenor(bonds.calendar)
+    averaged = any(table.source.timing == "average" for table in bonds.data.tables["zero_yields"])
+    if step is None or averaged:
+        return None
+    count = round(h.years / step.years)
+    if abs(count * step.years - h.years) > 1e-9:
+        return None
+    lives = [(n - step.times(s), h - step.times(s)) for s in range(count + 1)]
+    if not all(bonds.curves.quotes(life) for pair in lives for life in pair if life.years > 1e-9):
+        return None
+    ahead = [_ahead(bonds, bonds.curves.price(long) - bonds.curves.price(short), step.times(s)) for s, (long, short) in enumerate(lives)]
+    return np.stack([ahead[s + 1] - ahead[s] for s in range(count)], axis=2)
+
+
+NEAR: Mapping[str, Callable[[Bonds, Tenor, Tenor, Window], Built]] = MappingProxyType(
+    {"forward-spot": forward_spot, "yield-spread": yield_spread, "carry": carry}
+)
+DISTANT: Mapping[str, Callable[[Bonds, Tenor, Tenor], Built]] = MappingProxyType(
+    {"forward-spot-far": forward_spot_far, "yield-spread-to-maturity": yield_spread_to_maturity}
+)
+SIGNALS: Mapping[str, str] = MappingProxyType(
+    {
+        "forward-spot": "forward-spot spread",
+        "forward-spot-far": "forward-spot spread",
+        "yield-spread": "yield spread",
+        "yield-spread-to-maturity": "yield spread",
+        "carry": "carry (forward-spot spread)",
+    }
+)
