@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 
 from carrylab import record
@@ -15,7 +16,7 @@ from carrylab.data.checks import Check
 from carrylab.markets.parity import Parity
 from carrylab.options import Study
 from carrylab.report.html import html_table
-from carrylab.report.table import Table, side_by_side
+from carrylab.report.side_by_side import side_by_side
 from carrylab.report.text import report_text
 
 
@@ -23,7 +24,7 @@ from carrylab.report.text import report_text
 class Results:
     """One run. `findings` is a tidy table, one row per coefficient or statistic, under a unique key.
 
-    `checks` per market, `parities` as built, `audit` where it was asked for, `timings` in seconds by step.
+    `checks` by market, `parities` as built, `audit` where it was asked for, `timings` in seconds by step.
     """
 
     study: Study
@@ -35,11 +36,15 @@ class Results:
 
     def table(self, parity: str | None = None) -> pd.DataFrame:
         """The side-by-side view, one column a market; `parity` names one that several markets share, such as carry."""
-        return _as_frame(side_by_side(self.findings, parity=parity))
+        found = side_by_side(self.findings, parity=parity)
+        if found is None:
+            return pd.DataFrame()
+        rows = [[cell.text.strip() for cell in line.cells] or [""] * len(found.head) for line in found.lines]
+        return pd.DataFrame(rows, columns=list(found.head), index=[line.label for line in found.lines])
 
     def report(self, width: int = 100) -> str:
         """The whole report as plain text, `width` columns wide."""
-        audited = "" if self.audit is None else self.audit.text()
+        audited = () if self.audit is None else self.audit.lines()
         return report_text(self.findings, title=self.study.title, width=width, audit=audited)
 
     def panel(self) -> pd.DataFrame:
@@ -48,10 +53,34 @@ class Results:
 
     def save(self, directory: str | os.PathLike[str], *, parquet: bool = False, width: int = 100) -> Path:
         """Write the run folder: report.txt, findings.csv, panel.csv and run.json; findings.parquet on request."""
-        return record.save(self, Path(directory), parquet=parquet, width=width)
+        files = [s.path for market in self.study.markets for found in market.sources.values() for s in found]
+        files += [source.path for market in self.study.markets for source in market.controls]
+        account = {
+            "study": self.study.text,
+            "data_sha256": record.hashes(files),
+            "versions": record.versions(),
+            "seeds": {market.name: market.inference.seed for market in self.study.markets},
+            "seconds": {step: round(spent, 3) for step, spent in self.timings.items()},
+        }
+        run = record.Run(self.report(width), self.findings, self.panel(), account)
+        return record.save(run, Path(directory), parquet=parquet)
 
     def __repr__(self) -> str:
         return self.report()
 
     def _repr_html_(self) -> str:
-        return html_table(side_by_side(self.findings))
+        found = side_by_side(self.findings, title=self.study.title)
+        return html_table(found) if found else ""
+
+
+def _panel_of(parity: Parity) -> pd.DataFrame:
+    """Long rows of one parity in which the signal stands: date, entity, signal, and the legs by number."""
+    t, i = np.nonzero(np.isfinite(parity.signal))
+    labels = np.array([parity.calendar.label(row) for row in range(len(parity.calendar))])
+    names = np.array([entity.name for entity in parity.entities])
+    place = {"market": parity.market, "parity": parity.name, "horizon": str(parity.horizon)}
+    frame = pd.DataFrame({name: pd.Categorical.from_codes(np.zeros(len(t), dtype=np.int8), [text]) for name, text in place.items()})
+    frame["date"], frame["entity"], frame["signal"] = labels[t], names[i], parity.signal[t, i]
+    for leg in parity.legs:
+        frame[leg.name] = leg.values[t, i]
+    return frame

@@ -14,6 +14,12 @@ from carrylab.regression.law import statistics
 from carrylab.regression.sample import Floats, Sample
 
 Row = dict[str, Any]
+EFFECTS = {
+    "none": "no effects",
+    "entity": "entity effects",
+    "time": "time effects",
+    "both": "entity and time effects",
+}
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -47,6 +53,10 @@ class Fit:
         """Number of the first leg with this role, or None."""
         roles = [leg.role for leg in self.parity.legs]
         return roles.index(role) if role in roles else None
+
+    def method(self, errors: Errors, leg: int) -> str:
+        """Effects and errors of one leg in words."""
+        return f"{EFFECTS[self.estimate.effects]}; {errors.words[leg]}"
 
     def place(self) -> Row:
         """The columns that say where a row belongs and what it rests on."""

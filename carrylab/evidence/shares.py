@@ -55,7 +55,7 @@ def _coefficient(fit: Fit, errors: Errors, where: tuple[int, int], rank: str) ->
         "term": term,
         **tested(value, error, null, float(errors.df[at]), fit.confidence),
         "lags": errors.lags[at],
-        "method": errors.words[at],
+        "method": fit.method(errors, at),
     }
 
 
@@ -126,15 +126,18 @@ def _combination(fit: Fit, quantity: Quantity) -> Row:
         "rank": "headline",
         **tested(quantity.value, math.sqrt(max(variance, 0.0)), 0.0, float(fit.away.df[at]), fit.confidence),
         "lags": fit.away.lags[at],
-        "method": fit.away.words[at],
+        "method": fit.method(fit.away, at),
     }
 
 
 def _resolved(fit: Fit, found: Shares) -> Row:
     """Premium over all that is not carried over; a ratio's interval inverts the linear restriction."""
+    at = fit.leg_of("return")
+    if at is not None and not found.carried_over.gradient.any():
+        own = _coefficient(fit, fit.headline, (0, at), "headline")
+        own |= _scaled(found.premium, fit.headline, at, fit.confidence)
+        return own | {"leg": "", "role": "", "term": "resolved premium share"}
     row = _combination(fit, found.resolved) | {"term": "resolved premium share"}
-    if not found.carried_over.gradient.any():
-        return row
     gradients = np.array([found.premium.gradient, -found.carried_over.gradient])
     covariance = gradients @ _slope_covariance(fit.away, len(fit.parity.legs)) @ gradients.T
     reach = float(critical(fit.confidence, row["df"]))

@@ -40,10 +40,11 @@ def _levels(fit: Fit) -> list[Row]:
     errors = np.sqrt(np.diag(run.covariance))
     method = f"mean over all rows, equal-weighted cosines, {run.cosines} cosines"
     names = ("mean signal", "mean excess return")
-    rows = [
+    rows: list[Row] = [
         {"term": name, **tested(mean, error, 0.0, run.df, fit.confidence), "lags": run.cosines, "method": method}
         for name, mean, error in zip(names, means, errors, strict=False)
     ]
+    rows[0]["leg"] = fit.parity.signal_name
     if at is None or not fit.has_identity:
         return rows
     return [*rows, _level_share(means, run.covariance, run.df, fit.confidence)]

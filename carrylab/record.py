@@ -1,0 +1,121 @@
+"""Findings and files: a run folder is written whole or not at all, and read back exactly."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import platform
+import tempfile
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from importlib import metadata
+from importlib.util import find_spec
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from carrylab.errors import DataError, ExtraError
+from carrylab.findings import TEXTS
+
+FORMAT = "carrylab run 1"
+PACKAGES = ("carrylab", "numpy", "pandas", "scipy", "tabulate", "linearmodels", "statsmodels")
+RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\0")
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Run:
+    """What a run folder holds: the report, the two tables, and the account of how they were made."""
+
+    report: str
+    findings: pd.DataFrame
+    panel: pd.DataFrame
+    account: Mapping[str, Any]
+
+
+def save(run: Run, directory: Path, *, parquet: bool) -> Path:
+    """Write the run folder beside its place and rename it into place when it is whole.
+
+    An older run folder of the same name is replaced; any other folder or file of that name is refused.
+    """
+    if parquet and find_spec("pyarrow") is None:
+        raise ExtraError("findings.parquet needs pyarrow; install carrylab with its parquet extra")
+    _require_free(directory)
+    directory.parent.mkdir(parents=True, exist_ok=True)
+    with tempfile.TemporaryDirectory(prefix=f".{directory.name}-", dir=directory.parent) as made:
+        fresh = Path(made) / "run"
+        fresh.mkdir()
+        _write(run, fresh, parquet=parquet)
+        if directory.exists():
+            directory.rename(Path(made) / "old")
+        fresh.rename(directory)
+    return directory
+
+
+def _require_free(directory: Path) -> None:
+    if not directory.exists():
+        return
+    if directory.is_dir() and (not any(directory.iterdir()) or _is_run(directory)):
+        return
+    raise DataError(f"{directory}: exists and is no run folder of carrylab; name another with --into, or move it away")
+
+
+def _is_run(directory: Path) -> bool:
+    try:
+        return bool(json.loads((directory / "run.json").read_text(encoding="utf-8")).get("format") == FORMAT)
+    except (OSError, ValueError, AttributeError):
+        return False
+
+
+def _write(run: Run, folder: Path, *, parquet: bool) -> None:
+    (folder / "report.txt").write_text(run.report, encoding="utf-8", newline="\n")
+    write_csv(run.findings, folder / "findings.csv")
+    write_csv(run.panel, folder / "panel.csv")
+    if parquet:
+        run.findings.to_parquet(folder / "findings.parquet", index=False)
+    text = json.dumps({"format": FORMAT, **run.account}, indent=2, ensure_ascii=False)
+    (folder / "run.json").write_text(text + "\n", encoding="utf-8", newline="\n")
+
+
+def write_csv(frame: pd.DataFrame, path: Path) -> None:
+    """UTF-8, LF, shortest exact numbers; texts that a spreadsheet would take for a formula get a leading quote."""
+    guarded = frame.copy()
+    for name in guarded.columns:
+        if not pd.api.types.is_numeric_dtype(guarded[name]):
+            guarded[name] = _mapped(guarded[name], _guard)
+    guarded.to_csv(path, index=False, encoding="utf-8", lineterminator="\n")
+
+
+def read_findings(path: Path) -> pd.DataFrame:
+    """The findings of a run folder's CSV, exactly as they were."""
+    numbers = {name: float for name in pd.read_csv(path, nrows=0).columns if name not in TEXTS}
+    frame = pd.read_csv(path, keep_default_na=False, dtype=str)
+    for name in frame.columns:
+        if name in numbers:
+            frame[name] = pd.to_numeric(frame[name].replace("", "nan"))
+        else:
+            frame[name] = _mapped(frame[name], _unguard)
+    return frame
+
+
+def _mapped(column: pd.Series, change: Any) -> list[str]:
+    distinct = {value: change(str(value)) for value in column.unique()}
+    return [distinct[value] for value in column]
+
+
+def _guard(text: str) -> str:
+    return f"'{text}" if text.startswith((*RISKY, "'")) else text
+
+
+def _unguard(text: str) -> str:
+    return text[1:] if text.startswith("'") else text
+
+
+def hashes(paths: Iterable[Path]) -> dict[str, str]:
+    """SHA-256 of each file, by name."""
+    return {path.name: hashlib.sha256(path.read_bytes()).hexdigest() for path in sorted(set(paths))}
+
+
+def versions() -> dict[str, str]:
+    """Versions of Python and of the packages that make numbers."""
+    return {"python": platform.python_version()} | {name: metadata.version(name) for name in PACKAGES}

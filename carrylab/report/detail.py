@@ -1,0 +1,153 @@
+"""Each market on its own: slopes by group, the legs beside each other, the standard error beneath each slope."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+
+import pandas as pd
+
+from carrylab.report.numbers import fixed
+from carrylab.report.table import Cell, Line, Table, count_cell, error_cell, interval_cell, number_cell, p_cell, percent_cell
+
+SHOWN_CHECKS = ("error", "warning")
+
+
+def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
+    """One table a market, parity and horizon."""
+    shares = findings[(findings["section"] == "shares") & (findings["sample"] == "all")]
+    for key, rows in shares.groupby(["market", "parity", "horizon"], sort=False):
+        market, parity, horizon = (str(part) for part in key)
+        yield _detail(f"{market}: {parity}, {horizon}", rows)
+
+
+def _detail(title: str, rows: pd.DataFrame) -> Table:
+    headline = rows[rows["rank"] == "headline"]
+    legs = [str(leg) for leg in headline.loc[headline["term"] == "signal", "leg"].unique()]
+    own_p = not (headline["term"] == "nothing paid").any()
+    head: list[str] = []
+    for leg in legs:
+        head += [leg, "R2"] + (["p"] if own_p else [])
+    head += [] if own_p else ["p, nothing paid", "p, all paid"]
+    lines: list[Line] = []
+    groups = list(headline["group"].unique())
+    for group in [*(g for g in groups if g != "pooled"), "pooled"]:
+        lines += _group_lines(str(group), headline[headline["group"] == group], legs, own_p)
+    return Table(
+        title=title,
+        head=(*head, "obs.", "dates", "first", "last"),
+        lines=tuple(lines),
+        notes=_detail_notes(headline),
+        corner="slope on the signal",
+    )
+
+
+def _group_lines(group: str, rows: pd.DataFrame, legs: list[str], own_p: bool) -> Iterator[Line]:
+    first = rows.iloc[0]
+    tail = (count_cell(first["n_obs"]), count_cell(first["n_dates"]), Cell(first["first"]), Cell(first["last"]))
+    tests = () if own_p else tuple(p_cell(_p(rows, term)) for term in ("nothing paid", "all paid"))
+    terms = [term for term in rows.loc[rows["leg"] == legs[0], "term"].unique() if term not in ("const", "nothing paid")]
+    for term in terms:
+        signal = term == "signal"
+        upper: list[Cell] = []
+        lower: list[Cell] = []
+        for leg in legs:
+            row = rows[(rows["leg"] == leg) & (rows["term"] == term)].iloc[0]
+            upper += [number_cell(row["estimate"]), number_cell(row["r2"], 3) if signal else Cell()]
+            lower += [error_cell(row["std_error"]), Cell()]
+            if own_p:
+                upper.append(p_cell(row["p_value"]))
+                lower.append(Cell())
+        end = (*tests, *tail) if signal else (Cell(),) * (len(tests) + len(tail))
+        yield Line(group if signal else f"  {term}", (*upper, *end))
+        yield Line("", (*lower, *(Cell(),) * (len(tests) + len(tail))))
+
+
+def _p(rows: pd.DataFrame, term: str) -> float:
+    found = rows[rows["term"] == term]
+    return float(found["p_value"].iloc[0]) if len(found) else math.nan
+
+
+def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
+    signal = rows[rows["term"] == "signal"]
+    nulls = [
+        f"{row['leg']} {fixed(row['null'], 0)}"
+        for row in signal.drop_duplicates("leg").to_dict("records")
+        if not math.isnan(row["null"])
+    ]
+    methods = " / ".join(dict.fromkeys(signal["method"]))
+    said = [f"Slope of each leg on the signal, standard errors in parentheses: {methods}."]
+    if nulls:
+        said.append(f"Slopes when expected returns are constant: {', '.join(nulls)}.")
+    weights = signal.drop_duplicates("leg").dropna(subset="weight")
+    if len(weights):
+        listed = ", ".join(f"{row['leg']} {row['weight']:+.4g}" for row in weights.to_dict("records"))
+        said.append(f"Weights in the identity: {listed}.")
+    return tuple(said)
+
+
+def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str) -> Table | None:
+    """Newest signal of each entity with its fitted premium, interval and place in its own history."""
+    keep = (findings["section"] == "latest") & (findings["market"] == market)
+    rows = findings[keep & (findings["parity"] == parity) & (findings["horizon"] == horizon)]
+    if rows.empty:
+        return None
+    lines = []
+    for entity, own in rows.groupby("group", sort=False):
+        at = own.set_index("term")
+        premium = at.loc["fitted premium"]
+        lines.append(
+            Line(
+                str(entity),
+                (
+                    Cell(str(premium["last"])),
+                    percent_cell(at.at["signal", "estimate"]),
+                    percent_cell(at.at["percentile", "estimate"], 0),
+                    percent_cell(premium["estimate"]),
+                    interval_cell(premium["lower"] * 100, premium["upper"] * 100),
+                ),
+            )
+        )
+    return Table(
+        title=f"{market}: newest signal and fitted premium, {parity}, {horizon}",
+        head=("at", "signal, %", "percentile", "premium, %", "interval"),
+        lines=tuple(lines),
+        notes=(
+            "Premium over the horizon from the pooled fit, in sample; the interval is for the expected premium, not for "
+            "the return, which varies far more. Percentile within the entity's own history.",
+        ),
+        corner="entity",
+    )
+
+
+def ledger_table(findings: pd.DataFrame) -> Table | None:
+    """Cells read, dropped and used, one line a file."""
+    rows = findings[(findings["section"] == "ledger") & (findings["parity"] == "")]
+    if rows.empty:
+        return None
+    reasons = list(dict.fromkeys(rows["term"]))
+    lines = []
+    for key, own in rows.groupby(["market", "leg"], sort=False):
+        market, source = (str(part) for part in key)
+        sums = own.groupby("term")["estimate"].sum()
+        cells = (count_cell(own["group"].nunique()), *(count_cell(sums[reason]) for reason in reasons))
+        lines.append(Line(f"{market}, {source}", cells))
+    return Table("Row ledger", ("series", *reasons), tuple(lines), corner="file")
+
+
+def identity_lines(findings: pd.DataFrame) -> list[str]:
+    """One line a parity: the largest gap of its identity, and the rules used."""
+    rows = findings[findings["section"] == "identity"]
+    return [
+        f"{row['market']}, {row['parity']}, {row['horizon']}: largest gap {row['estimate']:.1e} over {row['n_obs']:,.0f} "
+        f"rows; {row['note']}"
+        for row in rows.to_dict("records")
+    ]
+
+
+def check_lines(findings: pd.DataFrame) -> list[str]:
+    """Every warning of the load checks, and how many notes there are beside them."""
+    rows = findings[findings["section"] == "check"]
+    lines = [str(note) for note in rows.loc[rows["rank"].isin(SHOWN_CHECKS), "note"]]
+    notes = int((rows["rank"] == "note").sum())
+    return [*lines, f"{notes} notes stand in findings.csv, section check."] if notes else lines

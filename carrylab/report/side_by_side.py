@@ -1,0 +1,262 @@
+"""The answer a reader sees first: one column a market, shares above, tests and sample beneath."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import pandas as pd
+
+from carrylab.report.table import (
+    Cell,
+    Line,
+    Table,
+    count_cell,
+    error_cell,
+    interval_cell,
+    number_cell,
+    p_cell,
+    percent_cell,
+    word_cell,
+)
+
+ROLE_WORDS = {
+    "return": "paid as excess return",
+    "fundamental": "comes true in the fundamental",
+    "carried over": "still in the price",
+    "approximation": "approximation error",
+}
+HORIZON_MIX = "Horizons, intervals or samples differ between the columns, so no test across markets is given."
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Column:
+    """All pooled findings of one market, parity and horizon."""
+
+    market: str
+    parity: str
+    horizon: str
+    rows: pd.DataFrame
+
+    def find(self, term: str, *, section: str = "shares", rank: str = "headline", role: str = "") -> pd.DataFrame:
+        """Rows of one term."""
+        rows = self.rows
+        keep = (rows["section"] == section) & (rows["term"] == term) & (rows["sample"] == "all")
+        if section == "shares":
+            keep &= rows["rank"] == rank
+        if role:
+            keep &= rows["role"] == role
+        return rows[keep]
+
+    def number(self, term: str, field: str = "estimate", *, section: str = "shares", rank: str = "headline") -> float:
+        """One number, NaN where the column has none."""
+        found = self.find(term, section=section, rank=rank)
+        return float(found[field].iloc[0]) if len(found) else math.nan
+
+    def text(self, term: str, field: str, *, section: str = "shares") -> str:
+        """One text, empty where the column has none."""
+        found = self.find(term, section=section)
+        return str(found[field].iloc[0]) if len(found) else ""
+
+
+def columns_of(findings: pd.DataFrame, parity: str | None = None) -> list[Column]:
+    """One column a market: the named parity, or each market's first, at the horizon most markets share."""
+    pooled = findings[(findings["group"] == "pooled") & findings["section"].isin(["shares", "summary", "warning"])]
+    shares = pooled[pooled["section"] == "shares"]
+    first = shares.drop_duplicates("market").set_index("market")["parity"]
+    wanted = {market: parity or own for market, own in first.items()}
+    there = shares[shares["parity"] == shares["market"].map(wanted)]
+    pairs = there[["market", "horizon"]].drop_duplicates()
+    common = pairs["horizon"].value_counts(sort=False)
+    found = []
+    for market, own in pairs.groupby("market", sort=False):
+        horizon = max(own["horizon"], key=lambda name: int(common[name]))
+        keep = (pooled["market"] == market) & (pooled["parity"] == wanted[market]) & (pooled["horizon"] == horizon)
+        found.append(Column(str(market), wanted[market], horizon, pooled[keep]))
+    return found
+
+
+def side_by_side(findings: pd.DataFrame, *, title: str = "", parity: str | None = None) -> Table | None:
+    """The table of all markets, or None where no market has the parity."""
+    columns = columns_of(findings, parity)
+    if not columns:
+        return None
+    lines = [*_head(columns), *_shares(columns), *_tests(columns), *_levels(columns), *_sample(columns)]
+    return Table(
+        title=title,
+        head=tuple(column.market for column in columns),
+        lines=tuple(lines),
+        notes=_notes(columns),
+    )
+
+
+def _line(label: str, columns: list[Column], cell: Callable[[Column], Cell]) -> Line:
+    return Line(label, tuple(cell(column) for column in columns))
+
+
+def _head(columns: list[Column]) -> list[Line]:
+    def span(column: Column) -> Cell:
+        row = column.rows.iloc[0]
+        return word_cell(f"{row['first']} to {row['last']}")
+
+    return [
+        _line("signal", columns, lambda c: word_cell(c.text("mean signal", "leg", section="summary"))),
+        _line("parity", columns, lambda c: word_cell(c.parity)),
+        _line("horizon", columns, lambda c: word_cell(f"{c.horizon}, by {c.rows.iloc[0]['interval']}")),
+        _line("origins", columns, span),
+    ]
+
+
+def _shares(columns: list[Column]) -> list[Line]:
+    lines = [Line("Share of the spread", heading=True)]
+    for role, words in ROLE_WORDS.items():
+        lines += _share_lines(columns, role, words)
+    lines.append(_line("sum", columns, lambda c: number_cell(c.number("sum of shares"), 3)))
+    lines.append(_line("resolved premium share", columns, lambda c: number_cell(c.number("resolved premium share"))))
+    lines.append(_line("", columns, _resolved_error))
+    return lines
+
+
+def _share_lines(columns: list[Column], role: str, words: str) -> list[Line]:
+    return [
+        _line(words, columns, lambda c: number_cell(_share(c, role)[0])),
+        _line("", columns, lambda c: error_cell(_share(c, role)[1])),
+        _line("  R2", columns, lambda c: number_cell(_r2(c, role), 3)),
+    ]
+
+
+def _share(column: Column, role: str) -> tuple[float, float]:
+    """Share of one role and its error; several fundamental legs are taken together."""
+    rows = column.find("signal", role=role)
+    if len(rows) == 1 and not math.isnan(rows["weight"].iloc[0]):
+        return float(rows["share"].iloc[0]), float(abs(rows["weight"].iloc[0]) * rows["std_error"].iloc[0])
+    if len(rows) > 1 and role == "fundamental":
+        return column.number("all paid"), column.number("all paid", "std_error")
+    return math.nan, math.nan
+
+
+def _r2(column: Column, role: str) -> float:
+    rows = column.find("signal", role=role)
+    return float(rows["r2"].iloc[0]) if len(rows) == 1 and role in ("return", "fundamental") else math.nan
+
+
+def _resolved_error(column: Column) -> Cell:
+    """A ratio's interval, else the error."""
+    row = column.find("resolved premium share")
+    if not len(row):
+        return Cell()
+    if row["note"].iloc[0]:
+        return interval_cell(float(row["lower"].iloc[0]), float(row["upper"].iloc[0]))
+    return error_cell(float(row["std_error"].iloc[0]))
+
+
+def _tests(columns: list[Column]) -> list[Line]:
+    return [
+        Line("p-value of the hypothesis", heading=True),
+        _line("nothing is paid", columns, lambda c: p_cell(c.number("nothing paid", "p_value"))),
+        _line(
+            "  second opinion", columns, lambda c: p_cell(c.number("nothing paid", "p_value", rank="second opinion"))
+        ),
+        _line("all is paid", columns, lambda c: p_cell(c.number("all paid", "p_value"))),
+        _line(
+            "true size of a 5% test, %",
+            columns,
+            lambda c: percent_cell(c.number("predicted size", section="summary"), 0),
+        ),
+    ]
+
+
+def _levels(columns: list[Column]) -> list[Line]:
+    def summary(term: str, field: str = "estimate") -> Callable[[Column], float]:
+        return lambda c: c.number(term, field, section="summary")
+
+    def mean_signal(column: Column) -> Cell:
+        value = summary("mean signal")(column)
+        return number_cell(value) if _is_ratio(column) else percent_cell(value)
+
+    mean, error, level = summary("mean excess return"), summary("mean excess return", "std_error"), summary("level share")
+    return [
+        Line("Levels over the horizon, %", heading=True),
+        _line("mean signal", columns, mean_signal),
+        _line("mean excess return", columns, lambda c: percent_cell(mean(c))),
+        _line("", columns, lambda c: error_cell(error(c) * 100)),
+        _line("mean return / mean signal", columns, lambda c: Cell() if _is_ratio(c) else number_cell(level(c))),
+    ]
+
+
+def _is_ratio(column: Column) -> bool:
+    return bool((column.rows["role"] == "carried over").any())
+
+
+def _sample(columns: list[Column]) -> list[Line]:
+    def count_of(field: str) -> Callable[[Column], Cell]:
+        return lambda c: count_cell(float(c.rows[field].iloc[0]))
+
+    def summary(term: str) -> Callable[[Column], Cell]:
+        return lambda c: number_cell(c.number(term, section="summary"), 1)
+
+    return [
+        Line("Sample", heading=True),
+        _line("observations", columns, count_of("n_obs")),
+        _line("dates", columns, count_of("n_dates")),
+        _line("independent windows", columns, summary("independent windows")),
+        _line("entities", columns, count_of("n_entities")),
+        _line("effective entities", columns, summary("effective entities")),
+    ]
+
+
+def comparison_table(findings: pd.DataFrame, parity: str | None = None) -> Table | None:
+    """Differences of the resolved premium shares with intervals, then the joint p; None where nothing compares."""
+    columns = columns_of(findings, parity)
+    horizons = {column.horizon for column in columns}
+    joint = findings[(findings["section"] == "joint") & (findings["parity"] == (parity or "each market's own spread"))]
+    joint = joint[joint["horizon"].isin(horizons)]
+    if len(horizons) > 1 or joint.empty:
+        return None
+    lines = [
+        Line(
+            str(row["term"]),
+            (number_cell(row["estimate"]), interval_cell(row["lower"], row["upper"]), p_cell(row["p_value"])),
+        )
+        for row in joint.to_dict("records")
+    ]
+    methods = " / ".join(dict.fromkeys(joint["method"]))
+    return Table(
+        title=f"Resolved premium shares compared: {parity or 'own spreads'}, {joint['horizon'].iloc[0]}",
+        head=("difference", "interval", "p"),
+        lines=tuple(lines),
+        notes=(f"Equal shares across markets are implied by no theory: the comparison is descriptive. {methods}.",),
+    )
+
+
+def _notes(columns: list[Column]) -> tuple[str, ...]:
+    said: dict[str, list[str]] = {}
+    for column in columns:
+        said.setdefault(_method(column), []).append(column.market)
+    methods = [f"{', '.join(markets)}: {method}." for method, markets in said.items()]
+    mixed = len(columns) > 1 and len({(c.horizon, c.rows.iloc[0]["interval"]) for c in columns}) > 1
+    warnings = [
+        f"{column.market}: {text}."
+        for column in columns
+        for text in column.rows.loc[column.rows["section"] == "warning", "note"]
+    ]
+    return (
+        "A share is weight times slope of a leg on the signal, all legs on one shared sample; standard errors in "
+        "parentheses, intervals in brackets. The shares add up to one by an accounting identity. The resolved premium "
+        "share is the premium share over all that is not carried over.",
+        "Slopes speak of variation in the spread: entity effects absorb standing premia, which the levels show. "
+        "R2 is within the effects. Levels are in percent, a log ratio as it is.",
+        *methods,
+        *([HORIZON_MIX] if mixed else []),
+        *warnings,
+    )
+
+
+def _method(column: Column) -> str:
+    premium = column.text("nothing paid", "method")
+    away = column.text("all paid", "method")
+    if not premium:
+        rows = column.find("signal")
+        return str(rows["method"].iloc[0]) if len(rows) else ""
+    return premium if premium == away or not away else f"{premium}; other rows: {away}"

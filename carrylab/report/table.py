@@ -1,0 +1,76 @@
+"""One table model for every form a report takes: raw value and finished text of each cell."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+from carrylab.report.numbers import count, fixed, in_brackets, in_parentheses, p_value, percent
+
+
+@dataclass(frozen=True, slots=True)
+class Cell:
+    """One cell: the raw number where it has one, and the text to print."""
+
+    text: str = ""
+    value: float = math.nan
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """One printed line of a table: its label and cells. A `heading` has no cells."""
+
+    label: str
+    cells: tuple[Cell, ...] = ()
+    heading: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Table:
+    """A title, the heads of the columns after the label column, lines, and notes beneath."""
+
+    title: str
+    head: tuple[str, ...]
+    lines: tuple[Line, ...]
+    notes: tuple[str, ...] = ()
+    corner: str = ""
+
+    def columns(self, chosen: slice) -> Table:
+        """The same table with some of its columns."""
+        lines = tuple(Line(line.label, line.cells[chosen], line.heading) for line in self.lines)
+        return Table(self.title, self.head[chosen], lines, self.notes, self.corner)
+
+
+def number_cell(value: float, digits: int = 2) -> Cell:
+    """An estimate; the space after it lets its digits stand above those in parentheses."""
+    return Cell(fixed(value, digits) + " ", value)
+
+
+def error_cell(value: float, digits: int = 2) -> Cell:
+    """A standard error in parentheses."""
+    return Cell(in_parentheses(value, digits), value)
+
+
+def interval_cell(lower: float, upper: float, digits: int = 2) -> Cell:
+    """An interval in brackets; its raw value is the lower end."""
+    return Cell(in_brackets(lower, upper, digits), lower)
+
+
+def p_cell(value: float) -> Cell:
+    """A p-value."""
+    return Cell(p_value(value) + " ", value)
+
+
+def percent_cell(value: float, digits: int = 2) -> Cell:
+    """A decimal shown in percent."""
+    return Cell(percent(value, digits) + " ", value)
+
+
+def count_cell(value: float) -> Cell:
+    """A whole number."""
+    return Cell(count(value) + " ", value)
+
+
+def word_cell(text: str) -> Cell:
+    """A text."""
+    return Cell(text + " ")
