@@ -71,7 +71,7 @@ def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int) 
     target = into or Path(f"{study.stem}_results")
     results = carrylab.run(carrylab.read_study(study), audit=audit, progress=_progress())
     results.save(target, parquet=parquet, width=width)
-    click.echo(results.report(width))
+    click.echo((target / "report.txt").read_text(encoding="utf-8"))
     click.echo(f"Run folder: {target}")
 
 

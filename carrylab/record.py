@@ -6,20 +6,23 @@ import hashlib
 import json
 import platform
 import tempfile
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from importlib import metadata
 from importlib.util import find_spec
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+import numpy.typing as npt
 import pandas as pd
 
 from carrylab.errors import DataError, ExtraError
-from carrylab.findings import TEXTS
+from carrylab.findings import COLUMNS, TEXTS
 
 FORMAT = "carrylab run 1"
 PACKAGES = ("carrylab", "numpy", "pandas", "scipy", "tabulate", "linearmodels", "statsmodels")
+NUMBERS = tuple(name for name in COLUMNS if name not in TEXTS)
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\0")
 
 
@@ -88,19 +91,16 @@ def write_csv(frame: pd.DataFrame, path: Path) -> None:
 
 def read_findings(path: Path) -> pd.DataFrame:
     """The findings of a run folder's CSV, exactly as they were."""
-    numbers = {name: float for name in pd.read_csv(path, nrows=0).columns if name not in TEXTS}
-    frame = pd.read_csv(path, keep_default_na=False, dtype=str)
-    for name in frame.columns:
-        if name in numbers:
-            frame[name] = pd.to_numeric(frame[name].replace("", "nan"))
-        else:
-            frame[name] = _mapped(frame[name], _unguard)
+    frame = pd.read_csv(path, keep_default_na=False, na_values=dict.fromkeys(NUMBERS, ""), float_precision="round_trip")
+    for name in TEXTS:
+        frame[name] = _mapped(frame[name].astype(str), _unguard)
     return frame
 
 
-def _mapped(column: pd.Series, change: Any) -> list[str]:
-    distinct = {value: change(str(value)) for value in column.unique()}
-    return [distinct[value] for value in column]
+def _mapped(column: pd.Series, change: Callable[[str], str]) -> npt.NDArray[np.object_]:
+    """Every text changed, each distinct one once."""
+    codes, distinct = pd.factorize(column)
+    return np.array([change(str(text)) for text in distinct], dtype=object)[codes]
 
 
 def _guard(text: str) -> str:

@@ -71,21 +71,10 @@ spot = [ {{ file = "fx_spot.csv", quote = "pair" }}, {{ file = "fx_crosses.csv",
 name = "Equity indices"
 kind = "equities"
 parities = ["dividend-price", "carry"]
-horizons = ["12m"]
+horizons = ["12m", "60m"]
 by = "economy"
 effects = "entity"
-[market.data]
-prices = {{ file = "equity_price.csv", spread = "economy" }}
-dividends = {{ file = "equity_dividend.csv", spread = "economy", basis = "trailing 12 months" }}
-total_return = {{ file = "equity_total_return.csv", spread = "economy" }}
-{DEPOSITS}
-[[market]]
-name = "Equity indices, five years"
-kind = "equities"
-parities = ["dividend-price"]
-horizons = ["60m"]
-by = "economy"
-effects = "entity"
+missing_tenor = "nearest"             # carry over five years takes the twelve-month bill
 [market.data]
 prices = {{ file = "equity_price.csv", spread = "economy" }}
 dividends = {{ file = "equity_dividend.csv", spread = "economy", basis = "trailing 12 months" }}

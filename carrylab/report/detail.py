@@ -3,13 +3,26 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Hashable, Iterator
+from typing import Any
 
 import pandas as pd
 
 from carrylab.report.numbers import fixed
-from carrylab.report.table import Cell, Line, Table, count_cell, error_cell, interval_cell, number_cell, p_cell, percent_cell
+from carrylab.report.table import (
+    Cell,
+    Line,
+    Table,
+    count_cell,
+    error_cell,
+    interval_cell,
+    number_cell,
+    p_cell,
+    percent_cell,
+    word_cell,
+)
 
+Record = dict[Hashable, Any]
 SHOWN_CHECKS = ("error", "warning")
 
 
@@ -23,49 +36,47 @@ def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
 
 def _detail(title: str, rows: pd.DataFrame) -> Table:
     headline = rows[rows["rank"] == "headline"]
-    legs = [str(leg) for leg in headline.loc[headline["term"] == "signal", "leg"].unique()]
     own_p = not (headline["term"] == "nothing paid").any()
     head: list[str] = []
+    legs = [str(leg) for leg in headline.loc[headline["term"] == "signal", "leg"].unique()]
     for leg in legs:
         head += [leg, "R2"] + (["p"] if own_p else [])
     head += [] if own_p else ["p, nothing paid", "p, all paid"]
+    by_group: dict[str, list[Record]] = {}
+    for record in headline.to_dict("records"):
+        by_group.setdefault(str(record["group"]), []).append(record)
     lines: list[Line] = []
-    groups = list(headline["group"].unique())
-    for group in [*(g for g in groups if g != "pooled"), "pooled"]:
-        lines += _group_lines(str(group), headline[headline["group"] == group], legs, own_p)
+    for group in sorted(by_group, key=lambda name: name == "pooled"):
+        lines += _group_lines(group, by_group[group], legs, own_p)
     return Table(
         title=title,
-        head=(*head, "obs.", "dates", "first", "last"),
+        head=(*head, "obs.", "from", "to"),
         lines=tuple(lines),
         notes=_detail_notes(headline),
-        corner="slope on the signal",
+        corner="slopes",
     )
 
 
-def _group_lines(group: str, rows: pd.DataFrame, legs: list[str], own_p: bool) -> Iterator[Line]:
-    first = rows.iloc[0]
-    tail = (count_cell(first["n_obs"]), count_cell(first["n_dates"]), Cell(first["first"]), Cell(first["last"]))
-    tests = () if own_p else tuple(p_cell(_p(rows, term)) for term in ("nothing paid", "all paid"))
-    terms = [term for term in rows.loc[rows["leg"] == legs[0], "term"].unique() if term not in ("const", "nothing paid")]
-    for term in terms:
+def _group_lines(group: str, records: list[Record], legs: list[str], own_p: bool) -> Iterator[Line]:
+    """Slope and error of every leg, the signal first and then each added predictor."""
+    at = {(record["leg"], record["term"]): record for record in records}
+    p = {record["term"]: record["p_value"] for record in records}
+    first = records[0]
+    tests = () if own_p else tuple(p_cell(p.get(term, math.nan)) for term in ("nothing paid", "all paid"))
+    end = (*tests, count_cell(first["n_obs"]), word_cell(first["first"]), word_cell(first["last"]))
+    blank = (Cell(),) * len(end)
+    for term in [term for leg, term in at if leg == legs[0] and term not in ("const", "nothing paid")]:
         signal = term == "signal"
         upper: list[Cell] = []
         lower: list[Cell] = []
         for leg in legs:
-            row = rows[(rows["leg"] == leg) & (rows["term"] == term)].iloc[0]
-            upper += [number_cell(row["estimate"]), number_cell(row["r2"], 3) if signal else Cell()]
-            lower += [error_cell(row["std_error"]), Cell()]
-            if own_p:
-                upper.append(p_cell(row["p_value"]))
-                lower.append(Cell())
-        end = (*tests, *tail) if signal else (Cell(),) * (len(tests) + len(tail))
-        yield Line(group if signal else f"  {term}", (*upper, *end))
-        yield Line("", (*lower, *(Cell(),) * (len(tests) + len(tail))))
-
-
-def _p(rows: pd.DataFrame, term: str) -> float:
-    found = rows[rows["term"] == term]
-    return float(found["p_value"].iloc[0]) if len(found) else math.nan
+            record = at[leg, term]
+            upper += [number_cell(record["estimate"]), number_cell(record["r2"], 3) if signal else Cell()]
+            lower += [error_cell(record["std_error"]), Cell()]
+            upper += [p_cell(record["p_value"])] if own_p else []
+            lower += [Cell()] if own_p else []
+        yield Line(group if signal else f"  {term}", (*upper, *(end if signal else blank)))
+        yield Line("", (*lower, *blank))
 
 
 def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
@@ -100,7 +111,7 @@ def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str)
             Line(
                 str(entity),
                 (
-                    Cell(str(premium["last"])),
+                    word_cell(str(premium["last"])),
                     percent_cell(at.at["signal", "estimate"]),
                     percent_cell(at.at["percentile", "estimate"], 0),
                     percent_cell(premium["estimate"]),
@@ -126,13 +137,14 @@ def ledger_table(findings: pd.DataFrame) -> Table | None:
     if rows.empty:
         return None
     reasons = list(dict.fromkeys(rows["term"]))
+    files = rows["leg"].str.split(": ", n=1).str[1]
+    once = rows.assign(file=files).drop_duplicates(["file", "group", "term"])
     lines = []
-    for key, own in rows.groupby(["market", "leg"], sort=False):
-        market, source = (str(part) for part in key)
+    for file, own in once.groupby("file", sort=False):
         sums = own.groupby("term")["estimate"].sum()
         cells = (count_cell(own["group"].nunique()), *(count_cell(sums[reason]) for reason in reasons))
-        lines.append(Line(f"{market}, {source}", cells))
-    return Table("Row ledger", ("series", *reasons), tuple(lines), corner="file")
+        lines.append(Line(str(file), cells))
+    return Table("Row ledger: cells read, dropped and why, and used", ("series", *reasons), tuple(lines), corner="file")
 
 
 def identity_lines(findings: pd.DataFrame) -> list[str]:

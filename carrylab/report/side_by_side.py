@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import textwrap
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -27,6 +28,7 @@ ROLE_WORDS = {
     "carried over": "still in the price",
     "approximation": "approximation error",
 }
+SIGNAL_WIDTH = 20
 HORIZON_MIX = "Horizons, intervals or samples differ between the columns, so no test across markets is given."
 
 
@@ -100,8 +102,14 @@ def _head(columns: list[Column]) -> list[Line]:
         row = column.rows.iloc[0]
         return word_cell(f"{row['first']} to {row['last']}")
 
+    signals = [textwrap.wrap(c.text("mean signal", "leg", section="summary"), SIGNAL_WIDTH) for c in columns]
+    deep = max(map(len, signals), default=0)
+    named = [
+        Line("" if at else "signal", tuple(word_cell(parts[at] if at < len(parts) else "") for parts in signals))
+        for at in range(deep)
+    ]
     return [
-        _line("signal", columns, lambda c: word_cell(c.text("mean signal", "leg", section="summary"))),
+        *named,
         _line("parity", columns, lambda c: word_cell(c.parity)),
         _line("horizon", columns, lambda c: word_cell(f"{c.horizon}, by {c.rows.iloc[0]['interval']}")),
         _line("origins", columns, span),

@@ -12,7 +12,7 @@ from carrylab.report.detail import check_lines, detail_tables, identity_lines, l
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
 from carrylab.report.table import Line, Table
 
-HEAD_WIDTH = 18
+HEAD_WIDTH = 12
 GAP = 2
 CAUTIONS = (
     "Not investment advice. Everything here is in sample, and a premium in sample is no forecast.",
@@ -63,23 +63,31 @@ def table_text(table: Table, width: int) -> str:
 
 def _blocks(table: Table, width: int) -> list[Table]:
     """As many columns in each block as fit, evenly shared out."""
-    label = max(len(_label(line)) for line in table.lines)
-    sizes = [
-        GAP + max([len(part) for part in _head(name)] + [len(line.cells[at].text) for line in table.lines if line.cells])
-        for at, name in enumerate(table.head)
-    ]
+    label = max(map(len, [table.corner, *(_label(line) for line in table.lines if not line.heading)]))
+    sizes = [GAP + max(map(len, [*_head(table, at), *_texts(table, at)])) for at in range(len(table.head))]
     fit = len(sizes)
     while fit > 1 and any(label + sum(sizes[at : at + fit]) > width for at in range(0, len(sizes), fit)):
         fit -= 1
     return [table.columns(slice(at, at + fit)) for at in range(0, len(sizes), fit)]
 
 
+def _texts(table: Table, at: int) -> list[str]:
+    return [line.cells[at].text for line in table.lines if line.cells]
+
+
+def _head(table: Table, at: int) -> list[str]:
+    """The head of a column in lines no wider than its cells need."""
+    wide = max([HEAD_WIDTH, *map(len, _texts(table, at))])
+    return [f"{part} " for part in textwrap.wrap(table.head[at], wide, break_long_words=False)]
+
+
 def _block(table: Table) -> str:
     """Head and body between rules, set by tabulate."""
     lines = [line for line in table.lines if line.heading or any(cell.text.strip(" -") for cell in line.cells)]
-    heads = [_head(name) for name in table.head]
+    heads = [_head(table, at) for at in range(len(table.head))]
     deep = max(len(parts) for parts in heads)
-    rows = [[table.corner if at == deep - 1 else "", *(_part(parts, at - deep) for parts in heads)] for at in range(deep)]
+    padded = [[""] * (deep - len(parts)) + parts for parts in heads]
+    rows = [[table.corner if at == deep - 1 else "", *(parts[at] for parts in padded)] for at in range(deep)]
     rows += [[_label(line), *(cell.text for cell in line.cells)] for line in lines]
     text = tabulate(
         [row + [""] * (1 + len(table.head) - len(row)) for row in rows],
@@ -93,14 +101,6 @@ def _block(table: Table) -> str:
     return "\n".join([rule, *printed[:deep], rule, *printed[deep:], rule])
 
 
-def _part(parts: list[str], at: int) -> str:
-    """A line of a head, counted from its last."""
-    return f"{parts[at]} " if -at <= len(parts) else ""
-
-
 def _label(line: Line) -> str:
     return line.label if line.heading else f"  {line.label}" if line.label else ""
 
-
-def _head(name: str) -> list[str]:
-    return textwrap.wrap(name, HEAD_WIDTH, break_long_words=False) or [name]
