@@ -1,0 +1,59 @@
+"""Performance goals, as ratios and seconds measured side by side in one run: `python scripts/bench.py`."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+import tempfile
+import time
+from pathlib import Path
+
+from environment import ROOT, prepare
+
+REPEATS = 7
+
+
+def best(command: list[str]) -> float:
+    """Shortest wall-clock time of several runs, in seconds."""
+    spent = []
+    for _ in range(REPEATS):
+        start = time.perf_counter()
+        subprocess.run(command, check=True, capture_output=True)
+        spent.append(time.perf_counter() - start)
+    return min(spent)
+
+
+def start_up() -> None:
+    """`carrylab --help` against a bare interpreter."""
+    bare = best([sys.executable, "-c", "pass"])
+    help_page = best([sys.executable, "-m", "carrylab", "--help"])
+    print(f"carrylab --help: {1000 * (help_page - bare):.0f} ms above python -c pass (goal 120)")
+
+
+def demo_study() -> None:
+    """The demo study end to end after imports, checks and run folder included."""
+    import carrylab
+    import carrylab.runner  # noqa: F401  the imports are not part of the measure
+
+    with tempfile.TemporaryDirectory() as folder:
+        start = time.perf_counter()
+        results = carrylab.run(carrylab.read_study(ROOT / "datasets_demo" / "clean" / "study.toml"))
+        results.save(Path(folder) / "run")
+        print(f"demo study: {time.perf_counter() - start:.2f} s of work after imports (goal 3)")
+
+
+def routines() -> None:
+    """Regressions and covariances against a loop over PanelOLS, and peak memory."""
+    from bench_routines import bench
+
+    for line in bench().lines():
+        print(line)
+
+
+if __name__ == "__main__":
+    python = prepare("test")
+    if Path(sys.prefix).resolve() != python.parent.parent.resolve():
+        sys.exit(subprocess.run([str(python), __file__], check=False).returncode)
+    start_up()
+    demo_study()
+    routines()
