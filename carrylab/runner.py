@@ -22,6 +22,7 @@ from carrylab.evidence.shares import share_rows
 from carrylab.evidence.summary import summary_rows
 from carrylab.findings import to_frame
 from carrylab.markets import MARKETS
+from carrylab.markets.columns import predictor
 from carrylab.markets.parity import Leg, Parity, identity
 from carrylab.markets.proof import identity_check
 from carrylab.options import Inference, Market, Study
@@ -129,6 +130,9 @@ def _columns(leg: Leg, stay: list[int]) -> Leg:
 def terms_of(parity: Parity, data: MarketData) -> tuple[tuple[str, ...], Floats]:
     """Names and values (T, N, K) of the signal and the added predictors, NaN for holes."""
     named = {"signal": parity.signal}
+    if data.market.panel is not None:
+        (panel,) = data.tables["panel"]
+        named |= {name: predictor(panel, name, parity) for name in data.market.panel.controls}
     named |= {table.source.role: _control(table, parity) for table in data.controls}
     return tuple(named), np.stack(list(named.values()), axis=2)
 

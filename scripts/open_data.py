@@ -95,6 +95,8 @@ by         = "currency"
 [market.data.spot]                        # exp(ls): local currency per dollar, up to one constant factor a currency
 file = "fx_spot.csv"
 quote = "foreign per home"
+# Known traps, left as they stand: the SEK short rate of 1992-Q3 (.8238) alone moves the pooled slope of the dollar
+# rate's change from .162 to .360, and the GBP short rates of 1973-Q1 to 1978-Q1 look like another country's.
 # The short rates are money-market rates of the quarter's last month, as annual decimals; the US one is an overnight
 # rate (7.09 percent in 1973-03 is the federal funds rate, from memory). They stand in for three-month rates and are
 # read as simple rates of a quarter, R/4. Read as continuous rates they move the pooled slope from .3603 to .3599,

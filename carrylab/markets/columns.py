@@ -63,6 +63,12 @@ def column(table: Table, name: str, calendar: Calendar) -> Floats:
     return found
 
 
+def predictor(table: Table, name: str, parity: Parity) -> Floats:
+    """One named column of a panel for the entities of its parity (T, N)."""
+    codes = _codes(table)
+    return column(table, name, parity.calendar)[:, [codes.index(entity.name) for entity in parity.entities]]
+
+
 def _place(frame: pd.DataFrame, codes: list[str]) -> np.typing.NDArray[np.int64]:
     return np.array([codes.index(str(code)) for code in frame["entity"]], dtype=np.int64)
 
