@@ -1,57 +1,33 @@
-"""A first study from the heads of files: what is known is filled in, what decides the numbers is asked."""
+"""`carrylab start`: what a file gives away is filled in, what it cannot tell is a question, nothing is guessed."""
 
+import os
 import re
+import subprocess
+import sys
 from pathlib import Path
 
-import numpy as np
 import pytest
 from click.testing import CliRunner
 
 from carrylab.cli import main
-from carrylab.data.calendar import parse_tenor
-from carrylab.data.read import read_market
 from carrylab.errors import DataError, StudyError
-from carrylab.markets import MARKETS
 from carrylab.start import start
+from carrylab.start_guess import read_head
 from carrylab.study import read_study
 
-DEMO = Path(__file__).parent.parent / "datasets_demo" / "clean"
+DEMO = Path(__file__).resolve().parent.parent / "datasets_demo" / "clean"
 FILES = (
     "zero_yields.csv",
-    "fx_spot.csv",
-    "fx_forwards.csv",
     "deposit_rates.csv",
+    "fx_spot.csv",
+    "fx_crosses.csv",
+    "fx_forwards.csv",
     "equity_price.csv",
     "equity_dividend.csv",
     "equity_total_return.csv",
+    "growth.csv",
 )
-QUESTION = re.compile(r"# (?P<key>\w+) = (?P<value>.*?)\s+# question: ")
-DEMO_DAYS = '{ QPD = "act/365f", QVP = "act/365f", QYR = "act/365f", others = "act/360" }'
-# What the makers of the demo files know: (role or market, key) -> answer; "" leaves the question unanswered.
-ANSWERS = {
-    ("zero_yields", "day_count"): "",
-    ("deposits", "compounding"): '"simple"',
-    ("deposits", "day_count"): DEMO_DAYS,
-    ("forwards", "quote"): '"points"',
-    ("forwards", "scale"): "{ QNK = 100, others = 10000 }",
-}
-DECIDES = {"unit", "compounding", "day_count", "quote", "scale", "timing", "basis", "tenor", "home", "legs", "signal"}
-
-
-def answered(text: str, answers=ANSWERS) -> str:
-    """The text with every question answered: as told, or as suggested."""
-    place, lines = "", []
-    for line in text.splitlines():
-        head = re.match(r"(?:# )?\[+(?:market\.data\.)?(\w+)\]+", line)
-        found = QUESTION.match(line)
-        if head:
-            place = head[1]
-            line = line.removeprefix("# ")
-        elif found:
-            value = answers.get((place, found["key"]), found["value"])
-            line = f"{found['key']} = {value}" if value else line
-        lines.append(line)
-    return "\n".join(lines)
+QUESTION = re.compile(r"^# (?=.* # question: )", re.MULTILINE)
 
 
 def write(folder: Path, name: str, text: str) -> Path:
@@ -60,163 +36,263 @@ def write(folder: Path, name: str, text: str) -> Path:
     return path
 
 
-def begun(folder: Path, name: str, text: str) -> str:
-    return start([write(folder, name, text)], folder / "study.toml")
+def begun(folder: Path, *files: Path) -> str:
+    """The text of a study for these files, also written into the folder."""
+    text = start(files, folder / "study.toml")
+    write(folder, "study.toml", text)
+    return text
 
 
-def parities(path: Path) -> dict:
-    """Every parity of the study that a file on its own can give, by market kind, name and horizon."""
-    study = read_study(path)
-    built = [
-        (market.kind, parity)
-        for market in study.markets
-        for parity in MARKETS[market.kind](read_market(market), study.economies)
-    ]
-    return {(kind, parity.name, parity.horizon): parity for kind, parity in built}
+def answered(folder: Path, text: str, answers: dict[str, str]) -> Path:
+    """The study with every question answered: as suggested, but for the lines to replace."""
+    for line, answer in answers.items():
+        assert line in text
+        text = text.replace(line, answer)
+    return write(folder, "study.toml", QUESTION.sub("", text))
 
 
-def identity(entity) -> tuple[str, str, str]:
-    return entity.economy, entity.currency, entity.maturity and parse_tenor(entity.maturity).canonical
-
-
-def test_every_open_question_is_named_as_missing(tmp_path) -> None:
-    text = start([DEMO / name for name in FILES], tmp_path / "study.toml")
+def refusals(folder: Path) -> str:
     with pytest.raises(StudyError) as refused:
-        read_study(write(tmp_path, "study.toml", text))
-    lines = str(refused.value).splitlines()
+        read_study(folder / "study.toml")
+    return str(refused.value)
+
+
+def question(text: str, key: str) -> str:
+    """The one question line of a key."""
+    (line,) = (line for line in text.splitlines() if re.match(rf"# {key} = .* # question: ", line))
+    return line
+
+
+def months(rows: int, cells: str) -> str:
+    return "".join(f"20{10 + at // 12}-{at % 12 + 1:02d}-28,{cells}\n" for at in range(rows))
+
+
+def test_the_demo_files_make_three_markets(tmp_path: Path) -> None:
+    text = begun(tmp_path, *(DEMO / name for name in FILES))
+    study = read_study(answered(tmp_path, text, {}))
+    assert [(market.kind, market.interval) for market in study.markets] == [
+        ("bonds", "month"),
+        ("currencies", "month"),
+        ("equities", "month"),
+    ]
+    bonds, currencies, equities = study.markets
+    assert bonds.sources["zero_yields"][0].spread == "maturity"
+    assert currencies.parities == ("uncovered-interest", "forward-discount")
+    assert [source.path.name for source in currencies.sources["spot"]] == ["fx_spot.csv", "fx_crosses.csv"]
+    assert set(equities.sources) == {"prices", "dividends", "total_return", "deposits"}
+    assert study.home == "QMT"
+    assert study.economies["QN"] == "QNK"
+
+
+def test_every_unanswered_key_is_named(tmp_path: Path) -> None:
+    begun(tmp_path, *(DEMO / name for name in FILES))
+    lines = refusals(tmp_path).splitlines()
     for place, key in (
-        ("zero_yields", "unit"),
-        ("zero_yields", "compounding"),
-        ("deposits", "unit"),
-        ("deposits", "compounding"),
-        ("spot", "quote"),
-        ("forwards", "quote"),
-        ("dividends", "basis"),
+        ("'Bonds', data.zero_yields", "unit"),
+        ("'Bonds', data.zero_yields", "compounding"),
+        ("'Bonds'", "horizons"),
+        ("'Currencies', data.spot", "quote"),
+        ("'Currencies', data.forwards", "quote"),
+        ("'Currencies'", "home"),
+        ("'Equity indices', data.dividends", "basis"),
     ):
-        assert any(f"data.{place}" in line and f"the key {key} is missing" in line for line in lines), (place, key)
-    assert any("the key home is missing" in line for line in lines)
-    assert any("the key horizons is missing" in line for line in lines)
+        assert any(f"market {place}: the key {key} is missing" in line for line in lines)
 
 
-def test_nothing_that_decides_the_numbers_is_filled_in(tmp_path) -> None:
-    text = start([DEMO / name for name in FILES], tmp_path / "study.toml")
-    filled = {line.split(" = ")[0] for line in text.splitlines() if not line.startswith("#") and " = " in line}
-    assert filled == {"title", "name", "kind", "interval", "parities", "file", "spread"}
-    assert not filled & DECIDES
+def test_no_unit_and_no_direction_is_ever_filled_in(tmp_path: Path) -> None:
+    text = begun(tmp_path, *(DEMO / name for name in FILES))
+    deciding = r"(unit|compounding|day_count|quote|scale|timing|basis|home|tenor|signal|legs|horizons) ="
+    assert not re.findall(f"^{deciding}", text, re.MULTILINE)
+    assert re.findall(f"^# {deciding}.* # question: ", text, re.MULTILINE)
 
 
-def test_answers_give_the_arrays_of_the_demo_study(tmp_path) -> None:
-    path = write(tmp_path, "study.toml", answered(start([DEMO / name for name in FILES], tmp_path / "study.toml")))
-    mine, demo = parities(path), parities(DEMO / "study.toml")
-    shared = sorted(set(mine) & set(demo), key=str)
-    assert {(kind, name) for kind, name, _ in shared} == {
-        ("bonds", "forward-spot"),
-        ("bonds", "yield-spread"),
-        ("currencies", "uncovered-interest"),
-        ("currencies", "forward-discount"),
-        ("equities", "dividend-price"),
-        ("equities", "carry"),
+def test_a_file_of_unknown_content_is_reported_not_placed(tmp_path: Path) -> None:
+    text = begun(tmp_path, DEMO / "zero_yields.csv", DEMO / "growth.csv")
+    assert "growth.csv: its name and its columns" in text
+    assert "growth.csv" not in "".join(re.findall("^file = .*", text, re.MULTILINE))
+
+
+def test_answers_go_in_by_replacing_the_question(tmp_path: Path) -> None:
+    rates = write(tmp_path, "deposits.csv", "date,currency,tenor,value\n" + months(24, "QNK,3m,4.5"))
+    spot = write(tmp_path, "spot.csv", "date,currency,value\n" + months(24, "QNK,1.25"))
+    text = begun(tmp_path, rates, spot)
+    answers = {
+        question(text, "home"): 'home = "QMT"',
+        question(text, "horizons"): 'horizons = ["3m"]',
+        question(text, "unit"): 'unit = "basis points"',
+        question(text, "compounding"): 'compounding = "simple"',
+        question(text, "day_count"): 'day_count = "act/365f"',
+        question(text, "quote"): 'quote = "foreign per home"',
     }
-    # The demo study begins and ends with its files, so both calendars are the same months.
-    for key in shared:
-        at = {identity(entity): i for i, entity in enumerate(demo[key].entities)}
-        pairs = [(i, at[identity(e)]) for i, e in enumerate(mine[key].entities) if identity(e) in at]
-        assert len(pairs) >= 6
-        for i, j in pairs:
-            np.testing.assert_allclose(mine[key].signal[:, i], demo[key].signal[:, j], rtol=0, atol=1e-14)
+    (market,) = read_study(answered(tmp_path, text, answers)).markets
+    deposits, quotes = market.sources["deposits"][0], market.sources["spot"][0]
+    assert (deposits.unit, deposits.compounding) == ("basis points", "simple")
+    assert deposits.day_count == {"others": "act/365f"}
+    assert quotes.quote == "foreign per home"
+    assert (market.home, str(market.horizons[0])) == ("QMT", "3m")
+
+
+def test_a_simple_rate_without_its_day_count_is_still_missing(tmp_path: Path) -> None:
+    rates = write(tmp_path, "deposits.csv", "date,currency,tenor,value\n" + months(24, "QNK,3m,4.5"))
+    spot = write(tmp_path, "spot.csv", "date,currency,value\n" + months(24, "QNK,1.25"))
+    text = begun(tmp_path, rates, spot)
+    text = text.replace(question(text, "compounding"), 'compounding = "simple"')
+    write(tmp_path, "study.toml", text)
+    assert "the key day_count is missing" in refusals(tmp_path)
+
+
+def test_a_panel_of_own_columns_asks_for_signal_and_legs(tmp_path: Path) -> None:
+    panel = write(tmp_path, "panel.csv", "month,country,spread,rx,dy\n" + months(24, "QM,0.1,0.2,0.3"))
+    text = begun(tmp_path, panel)
+    said = refusals(tmp_path)
+    assert "the key signal is missing" in said
+    assert "the key legs is missing" in said
+    legs = (
+        'legs = [ { name = "return", column = "rx", weight = 1, null = 0, role = "return" }, '
+        '{ name = "rise", column = "dy", weight = 1, null = 1, role = "fundamental" } ]'
+    )
+    (market,) = read_study(answered(tmp_path, text, {question(text, "legs"): legs})).markets
+    assert market.panel is not None
+    assert (market.panel.entity, market.panel.signal) == ("country", "spread")
+    assert [leg.role for leg in market.panel.legs] == ["return", "fundamental"]
+    assert market.sources["panel"][0].columns == {"month": "date"}
+
+
+def test_numbers_in_column_names_are_no_lengths_until_the_user_says_so(tmp_path: Path) -> None:
+    path = write(tmp_path, "zero_yields.csv", "date,y1,y2,y10\n" + months(24, "1,2,3"))
+    text = begun(tmp_path, path)
+    line = question(text, "columns")
+    answer = 'columns = { y1 = "1y", y2 = "2y", y10 = "10y" }'
+    (market,) = read_study(answered(tmp_path, text, {line: answer})).markets
+    source = market.sources["zero_yields"][0]
+    assert (source.spread, source.columns["y10"]) == ("maturity", "10y")
+    assert source.constants == {"economy": "US"}
 
 
 @pytest.mark.parametrize(
     ("dates", "interval"),
     [
-        (("2024-01-31", "2024-02-29", "2024-03-29", "2024-04-30"), "month"),
-        (("2024-01", "2024-02", "2024-03", "2024-04"), "month"),
-        (("2024-01-01", "2024-01-02", "2024-01-03", "2024-01-04"), "day"),
-        (("2024-01-05", "2024-01-12", "2024-01-19", "2024-01-26"), "week"),
-        (("2023-Q1", "2023-Q2", "2023-Q3", "2023-Q4"), "quarter"),
-        (("2021", "2022", "2023", "2024"), "year"),
+        (["2024-01-02", "2024-01-03", "2024-01-04", "2024-01-05", "2024-01-08"], "day"),
+        (["2024-W01", "2024-W02", "2024-W03"], "week"),
+        (["2024-01-31", "2024-02-29", "2024-03-31"], "month"),
+        (["2024-Q1", "2024-Q2", "2024-Q3"], "quarter"),
+        (["2021", "2022", "2023"], "year"),
+        (["2024-01"], None),
     ],
 )
-def test_interval_from_the_spacing_of_dates(tmp_path, dates, interval) -> None:
-    rows = "\n".join(f"{date},USDJPY,{110 + i}" for i, date in enumerate(dates))
-    assert f'\ninterval = "{interval}"\n' in begun(tmp_path, "spot.csv", f"date,pair,value\n{rows}\n")
+def test_interval_from_the_spacing_of_dates(tmp_path: Path, dates: list[str], interval: str | None) -> None:
+    rows = "".join(f"{date},QN,100\n" for date in dates)
+    assert read_head(write(tmp_path, "price.csv", "date,economy,value\n" + rows)).dates.interval == interval
 
 
-def test_one_date_does_not_tell_the_interval(tmp_path) -> None:
-    text = begun(tmp_path, "spot.csv", "date,pair,value\n2024-01-31,USDJPY,147\n")
-    assert re.search(r'# interval = "month" +# question: ', text)
-
-
-def test_order_of_day_and_month_is_asked_where_every_cell_can_be_both(tmp_path) -> None:
-    both = begun(tmp_path, "spot.csv", "date,pair,value\n01/02/2024,USDJPY,147\n01/03/2024,USDJPY,148\n")
-    assert '# date_order = "dmy"' in both
-    told = begun(tmp_path, "spot.csv", "date,pair,value\n31/01/2024,USDJPY,147\n29/02/2024,USDJPY,148\n")
-    assert '\ndate_order = "dmy"\n' in told
-
-
-def test_wide_yields_with_numbered_columns_ask_what_the_numbers_are(tmp_path) -> None:
-    text = begun(tmp_path, "yields.csv", "date,r1,r3,r12\n2024-01,5.3,5.2,4.8\n2024-02,5.3,5.2,4.9\n")
-    assert '\nspread = "maturity"\n' in text
-    assert re.search(r'# columns = \{ r1 = "1m", r3 = "3m", r12 = "12m" \} +# question: ', text)
-    assert "numbers run from 4.8 to 5.3" in text
-
-
-def test_other_names_are_mapped_and_marks_for_missing_listed(tmp_path) -> None:
-    text = begun(
-        tmp_path,
-        "spot.csv",
-        "obs_date;ccy;rate\n2024-01-31;JPY;147,2\n2024-02-29;JPY;n/a\n2024-03-29;JPY;151,3\n",
-    )
-    assert '\ncolumns = { obs_date = "date", ccy = "currency" }\n' in text
-    assert '\ndecimal = ","\nmissing = ["n/a"]\n' in text
-
-
-def test_own_signal_and_legs_become_a_columns_market(tmp_path) -> None:
-    rows = "date,country,spread,rx,dy\n2024-01,AA,.01,.02,-.01\n2024-02,AA,.02,.01,.01\n"
-    text = begun(tmp_path, "panel.csv", rows)
-    with pytest.raises(StudyError, match="signal is missing"):
-        read_study(write(tmp_path, "study.toml", text))
-    market = read_study(write(tmp_path, "study.toml", answered(text, {}))).markets[0]
-    assert market.panel is not None
-    assert market.panel.entity == "country"
-    assert [leg.column for leg in market.panel.legs] == ["rx", "dy"]
-    assert {leg.role for leg in market.panel.legs} == {"other"}
-
-
-def test_a_file_whose_role_cannot_be_told_is_said_so(tmp_path) -> None:
-    text = begun(tmp_path, "growth.csv", "date,QM,QN\n2024-01,2.5,2.4\n2024-02,2.6,2.2\n")
-    assert "# growth.csv: its name and its columns (QM, QN) do not tell what it holds." in text
+def test_one_date_leaves_the_interval_a_question(tmp_path: Path) -> None:
+    text = begun(tmp_path, write(tmp_path, "zero.csv", "date,economy,1y,2y\n2024-01,QN,1,2\n"))
+    assert '"month", "quarter", "year"' in question(text, "interval")
+    assert "the key interval is missing" in refusals(tmp_path)
 
 
 @pytest.mark.parametrize(
-    ("content", "said"),
+    ("dates", "order"),
+    [(("31/01/2024", "29/02/2024"), "dmy"), (("01/31/2024", "02/29/2024"), "mdy"), (("01/02/2024", "03/04/2024"), "?")],
+)
+def test_order_of_day_and_month(tmp_path: Path, dates: tuple[str, str], order: str) -> None:
+    rows = "".join(f"{date},QN,1,2\n" for date in dates)
+    path = write(tmp_path, "zero.csv", "date,economy,1y,2y\n" + rows)
+    assert read_head(path).dates.order == order
+    text = begun(tmp_path, path)
+    if order == "?":
+        assert question(text, "date_order")
+    else:
+        assert f'\ndate_order = "{order}"' in text
+
+
+def test_decimal_commas_and_marks_for_missing_are_filled_in(tmp_path: Path) -> None:
+    path = write(tmp_path, "price.csv", "date;economy;value\n2024-01;QN;1,25\n2024-02;QN;n/a\n2024-03;QN;1,5\n")
+    text = begun(tmp_path, path)
+    assert '\ndecimal = ","' in text
+    assert '\nmissing = ["n/a"]' in text
+    assert read_head(path).span("value") == (1.25, 1.5)
+
+
+@pytest.mark.parametrize(
+    ("name", "header", "cells", "roles"),
     [
-        ("", "is empty"),
-        ("date,value\n", "no data row"),
-        ("name,value\nAA,1\nBB,2\n", "no column of dates"),
-        ("date,name\n2024-01,x\n2024-02,y\n", "no column of numbers"),
-        ("date,a\n2024-01,1,2\n", "row 2 has 3 cells"),
-        ("PK\x03\x04....", "a zip archive"),
+        ("curve.csv", "date,economy,maturity,value", "QN,5y,1", {"zero_yields": "value"}),
+        ("a.csv", "date,economy,maturity,value", "QN,5y,1", {"zero_yields": "value"}),
+        ("a.csv", "date,currency,tenor,value", "QNK,3m,1", {"deposits": "value"}),
+        ("a.csv", "date,pair,bid,ask", "QNKQMT,1,1.1", {"spot": ""}),
+        ("a.csv", "date,pair,tenor,bid,ask", "QNKQMT,1m,1,1.1", {"forwards": ""}),
+        ("fwd_points.csv", "date,QNK,QPD", "1,2", {"forwards": ""}),
+        (
+            "stocks.csv",
+            "date,price,dividend,bill",
+            "1,2,3",
+            {"prices": "price", "dividends": "dividend", "deposits": "bill"},
+        ),
+        ("tr.csv", "date,economy,value", "QN,1", {"total_return": "value"}),
+        ("a.csv", "date,economy,value", "QN,1", {}),
+        ("a.csv", "date,economy,x,y", "QN,1,2", {"panel": ""}),
     ],
 )
-def test_bad_files_are_one_line(tmp_path, content, said) -> None:
-    with pytest.raises(DataError, match=said) as refused:
-        begun(tmp_path, "bad.csv", content)
+def test_probable_role(tmp_path: Path, name: str, header: str, cells: str, roles: dict[str, str]) -> None:
+    path = write(tmp_path, name, f"{header}\n{months(3, cells)}")
+    assert read_head(path).roles == roles
+
+
+def test_share_prices_bring_their_own_bill_rate(tmp_path: Path) -> None:
+    stocks = write(tmp_path, "stocks.csv", "date,price,dividend,bill\n" + months(24, "100,4,3"))
+    rates = write(tmp_path, "deposits.csv", "date,currency,tenor,value\n" + months(24, "QNK,3m,4.5"))
+    spot = write(tmp_path, "spot.csv", "date,currency,value\n" + months(24, "QNK,1.25"))
+    currencies, equities = read_study(answered(tmp_path, begun(tmp_path, stocks, rates, spot), {})).markets
+    assert [source.path.name for source in currencies.sources["deposits"]] == ["deposits.csv"]
+    assert [source.path.name for source in equities.sources["deposits"]] == ["stocks.csv"]
+    assert equities.sources["deposits"][0].columns == {"bill": "value"}
+
+
+def test_paths_are_relative_to_the_study(tmp_path: Path) -> None:
+    (tmp_path / "data").mkdir()
+    path = write(tmp_path / "data", "zero yields.csv", "date,economy,1y,2y\n" + months(12, "QN,1,2"))
+    assert 'file = "data/zero yields.csv"' in begun(tmp_path, path)
+
+
+@pytest.mark.parametrize(
+    ("name", "content", "said"),
+    [
+        ("none.csv", None, "none.csv"),
+        ("empty.csv", b"", "is empty"),
+        ("head.csv", b"date,economy,value\n", "no data row"),
+        ("words.csv", b"date,economy,value\n2024-01,QN,high\n2024-02,QN,low\n", "no column of numbers"),
+        ("dates.csv", b"when,economy,value\nsoon,QN,1\nlater,QN,2\n", "no column of dates"),
+        ("book.csv", b"PK\x03\x04 and more", "not the text its name says"),
+        ("latin.csv", b"date,land,value\n2024-01,\xd6st,1\n", "latin-1"),
+        ("folder.csv", "folder", "folder"),
+    ],
+)
+def test_bad_files_are_one_line(tmp_path: Path, name: str, content: bytes | str | None, said: str) -> None:
+    path = tmp_path / name
+    if content == "folder":
+        path.mkdir()
+    elif isinstance(content, bytes):
+        path.write_bytes(content)
+    with pytest.raises(DataError) as refused:
+        start([path], tmp_path / "study.toml")
+    assert said in str(refused.value)
+    assert name in str(refused.value)
     assert "\n" not in str(refused.value)
-    assert "bad.csv" in str(refused.value)
 
 
-def test_missing_file_and_folder_are_one_line(tmp_path) -> None:
-    for path, said in ((tmp_path / "none.csv", "no such file"), (tmp_path, "is a folder")):
-        with pytest.raises(DataError, match=said):
-            start([path], tmp_path / "study.toml")
-
-
-def test_command_writes_the_study_and_keeps_an_old_one(tmp_path) -> None:
-    path = tmp_path / "mine.toml"
-    done = CliRunner().invoke(main, ["start", str(DEMO / "fx_spot.csv"), "--study", str(path)])
-    assert done.exit_code == 0, done.output
-    assert path.read_text(encoding="utf-8") == start([DEMO / "fx_spot.csv"], path)
-    again = CliRunner().invoke(main, ["start", str(DEMO / "fx_spot.csv"), "--study", str(path)])
+def test_the_command_writes_once_and_never_over_a_study(tmp_path: Path) -> None:
+    study = tmp_path / "study.toml"
+    first = CliRunner().invoke(main, ["start", str(DEMO / "zero_yields.csv"), "--study", str(study)])
+    assert first.exit_code == 0, first.output
+    written = study.read_text(encoding="utf-8")
+    assert 'kind = "bonds"' in written
+    again = CliRunner().invoke(main, ["start", str(DEMO / "fx_spot.csv"), "--study", str(study)])
     assert again.exit_code == 2
-    assert "exists already" in again.output
+    assert "exists already" in again.stderr
+    assert study.read_text(encoding="utf-8") == written
+
+
+def test_pandas_waits_for_the_first_file() -> None:
+    code = "import sys, carrylab.start; sys.exit('pandas' in sys.modules)"
+    assert subprocess.run([sys.executable, "-c", code], env=os.environ, check=False).returncode == 0
