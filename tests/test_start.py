@@ -1,16 +1,27 @@
 """`carrylab start`: what a file gives away is filled in, what it cannot tell is a question, nothing is guessed."""
 
+import math
 import os
 import re
 import subprocess
 import sys
 from pathlib import Path
 
+import numpy as np
+import numpy as np
 import pytest
 from click.testing import CliRunner
 
 from carrylab.cli import main
+from carrylab.data.calendar import Floats, Tenor, parse_tenor
+from carrylab.data.read import read_market
+from carrylab.data.calendar import parse_tenor
+from carrylab.data.read import read_market
 from carrylab.errors import DataError, StudyError
+from carrylab.markets import MARKETS
+from carrylab.markets.parity import Entity, Parity
+from carrylab.markets import MARKETS
+from carrylab.markets.parity import Parity
 from carrylab.start import start
 from carrylab.start_guess import read_head
 from carrylab.study import read_study
@@ -27,6 +38,14 @@ FILES = (
     "equity_total_return.csv",
     "growth.csv",
 )
+# What the makers of the demo files know and no file says.
+DEMO_ANSWERS = {
+    "deposits": {
+        "compounding": 'compounding = "simple"',
+        "day_count": 'day_count = { QPD = "act/365f", QVP = "act/365f", QYR = "act/365f", others = "act/360" }',
+    },
+    "forwards": {"quote": 'quote = "points"', "scale": "scale = { QNK = 100, others = 10000 }"},
+}
 QUESTION = re.compile(r"^# (?=.* # question: )", re.MULTILINE)
 
 
@@ -84,6 +103,50 @@ def test_the_demo_files_make_three_markets(tmp_path: Path) -> None:
     assert study.economies["QN"] == "QNK"
 
 
+def told(text: str) -> str:
+    """The demo's questions answered by those who made its files, table by table."""
+    tables = re.split(r"(?=^\[\[)", text, flags=re.MULTILINE)
+    for at, table in enumerate(tables):
+        role = re.match(r"\[\[market\.data\.(\w+)", table)
+        for key, answer in DEMO_ANSWERS.get(role[1] if role else "", {}).items():
+            tables[at] = tables[at].replace(question(table, key), answer)
+    return "".join(tables)
+
+
+def parities(study: Path) -> dict[tuple[str, str, str], Parity]:
+    """Every parity of a study by market kind, name and horizon."""
+    read = read_study(study)
+    return {
+        (market.kind, parity.name, str(parity.horizon)): parity
+        for market in read.markets
+        for parity in MARKETS[market.kind](read_market(market), read.economies)
+    }
+
+
+def what(entity: Entity) -> tuple[str, str, str]:
+    return entity.economy, entity.currency, entity.maturity and parse_tenor(entity.maturity).canonical
+
+
+def test_right_answers_give_the_arrays_of_the_demo_study(tmp_path: Path) -> None:
+    text = told(begun(tmp_path, *(DEMO / name for name in FILES)))
+    mine, demo = parities(answered(tmp_path, text, {})), parities(DEMO / "study.toml")
+    shared = set(mine) & set(demo)
+    assert {(kind, name) for kind, name, _ in shared} == {
+        ("bonds", "forward-spot"),
+        ("bonds", "yield-spread"),
+        ("currencies", "uncovered-interest"),
+        ("currencies", "forward-discount"),
+        ("equities", "dividend-price"),
+        ("equities", "carry"),
+    }
+    for key in shared:
+        at = {what(entity): i for i, entity in enumerate(demo[key].entities)}
+        both = [(i, at[what(entity)]) for i, entity in enumerate(mine[key].entities) if what(entity) in at]
+        assert len(both) >= 6
+        for i, j in both:
+            np.testing.assert_allclose(mine[key].signal[:, i], demo[key].signal[:, j], rtol=0, atol=1e-14)
+
+
 def test_every_unanswered_key_is_named(tmp_path: Path) -> None:
     begun(tmp_path, *(DEMO / name for name in FILES))
     lines = refusals(tmp_path).splitlines()
@@ -110,6 +173,56 @@ def test_a_file_of_unknown_content_is_reported_not_placed(tmp_path: Path) -> Non
     text = begun(tmp_path, DEMO / "zero_yields.csv", DEMO / "growth.csv")
     assert "growth.csv: its name and its columns" in text
     assert "growth.csv" not in "".join(re.findall("^file = .*", text, re.MULTILINE))
+
+
+def parities(path: Path) -> dict[tuple[str, str, Tenor], Parity]:
+    """Every parity of a study, by market kind, name and horizon."""
+    study = read_study(path)
+    return {
+        (market.kind, parity.name, parity.horizon): parity
+        for market in study.markets
+        for parity in MARKETS[market.kind](read_market(market), study.economies)
+    }
+
+
+def signals(parity: Parity) -> dict[tuple[str, str, str], Floats]:
+    """The signal of each entity, by codes; a maturity in months, however it was written."""
+    names = [(e.economy, e.currency, e.maturity and parse_tenor(e.maturity).canonical) for e in parity.entities]
+    return {name: parity.signal[:, at] for at, name in enumerate(names)}
+
+
+def test_the_demo_files_with_answers_give_the_signals_of_the_demo_study(tmp_path: Path) -> None:
+    text = begun(tmp_path, *(DEMO / name for name in FILES if name != "growth.csv"))
+    days = 'day_count = { QPD = "act/365f", QVP = "act/365f", QYR = "act/365f", others = "act/360" }'
+    zero, rest = text.split('name = "Currencies"')
+    # What only their makers know: rates of deposits are simple, forwards are points.
+    rest = re.sub("# compounding = .*", 'compounding = "simple"', rest)
+    rest = re.sub("# day_count = .*", days, rest)
+    rest = re.sub("# scale = .*", "scale = { QNK = 100, others = 10000 }", rest)
+    ahead, after = rest.split("[[market.data.forwards]]")
+    after = after.replace('# quote = "pair"', '# quote = "points"', 1)
+    zero = re.sub("# day_count = .*\n", "", zero)
+    parts = f'{zero}name = "Currencies"{ahead}[[market.data.forwards]]{after}'
+    mine, demo = parities(answered(tmp_path, parts, {})), parities(DEMO / "study.toml")
+    shared = set(mine) & set(demo)
+    assert {name for _, name, _ in shared} >= {"forward-spot", "yield-spread", "uncovered-interest", "forward-discount"}
+    assert {name for kind, name, _ in shared if kind == "equities"} == {"dividend-price", "carry"}
+    for key in shared:
+        left, right = signals(mine[key]), signals(demo[key])
+        assert len(set(left) & set(right)) >= 10
+        for entity in set(left) & set(right):
+            np.testing.assert_allclose(left[entity], right[entity], rtol=0, atol=1e-14)
+
+
+def test_one_country_without_codes_can_be_built_once_it_is_answered(tmp_path: Path) -> None:
+    rows = "".join(f"{2000 + at // 12}-{at % 12 + 1:02d},{100 + at},{3 + at % 5},4\n" for at in range(36))
+    stocks = write(tmp_path, "stocks.csv", "date,price,dividend,bill\n" + rows)
+    text = begun(tmp_path, stocks)
+    answers = {question(text, "tenor"): 'tenor = "12m"', question(text, "day_count"): ""}
+    ratio = parities(answered(tmp_path, text, answers))["equities", "dividend-price", parse_tenor("12m")]
+    # 2000-01: dividends of 3 on a price of 100.
+    assert ratio.signal[0, 0] == pytest.approx(math.log(0.03), abs=1e-15)
+    assert ratio.entities[0].currency == "USD"
 
 
 def test_answers_go_in_by_replacing_the_question(tmp_path: Path) -> None:
@@ -249,6 +362,11 @@ def test_share_prices_bring_their_own_bill_rate(tmp_path: Path) -> None:
     assert equities.sources["deposits"][0].columns == {"bill": "value"}
 
 
+def test_other_names_are_mapped(tmp_path: Path) -> None:
+    path = write(tmp_path, "spot.csv", "obs_date,ccy,rate\n" + months(12, "JPY,147.2"))
+    assert '\ncolumns = { obs_date = "date", ccy = "currency" }\n' in begun(tmp_path, path)
+
+
 def test_paths_are_relative_to_the_study(tmp_path: Path) -> None:
     (tmp_path / "data").mkdir()
     path = write(tmp_path / "data", "zero yields.csv", "date,economy,1y,2y\n" + months(12, "QN,1,2"))
@@ -263,6 +381,7 @@ def test_paths_are_relative_to_the_study(tmp_path: Path) -> None:
         ("head.csv", b"date,economy,value\n", "no data row"),
         ("words.csv", b"date,economy,value\n2024-01,QN,high\n2024-02,QN,low\n", "no column of numbers"),
         ("dates.csv", b"when,economy,value\nsoon,QN,1\nlater,QN,2\n", "no column of dates"),
+        ("uneven.csv", b"date,a\n2024-01,1,2\n", "row 2 has 3 cells"),
         ("book.csv", b"PK\x03\x04 and more", "not the text its name says"),
         ("latin.csv", b"date,land,value\n2024-01,\xd6st,1\n", "latin-1"),
         ("folder.csv", "folder", "folder"),
