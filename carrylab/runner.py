@@ -32,6 +32,8 @@ from carrylab.regression.sample import Floats, OneStep, Sample, make_sample, tak
 from carrylab.results import Results
 
 RHO_STEP = 0.02
+PRICED = ("zero_yields", "spot", "prices", "panel")
+AVERAGED = "prices are period averages: one more lag of overlap is allowed for, and there are no one-period errors"
 Progress = Callable[[str], None]
 
 
@@ -154,11 +156,18 @@ def sample_of(parity: Parity, data: MarketData) -> tuple[Sample, Floats]:
         terms=names,
         legs=[leg.name for leg in parity.legs],
         steps=steps,
-        overlap=parity.window.overlap,
+        # An average over a period reaches one period further back, so its changes overlap by one more.
+        overlap=parity.window.overlap + int(is_averaged(data)),
         one_step=[_one_step(leg, int(steps.max())) for leg in parity.legs],
         label=f"{parity.market}, {parity.name}, {parity.horizon}",
     )
     return sample, terms
+
+
+def is_averaged(data: MarketData) -> bool:
+    """Whether the market's prices or yields are averages over the period."""
+    priced = (table for role in PRICED for table in data.tables.get(role, ()))
+    return any(table.source.timing == "average" for table in priced)
 
 
 def _one_step(leg: Leg, steps: int) -> OneStep | None:
@@ -176,7 +185,8 @@ def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
     for parity in built.parities:
         sample, terms = sample_of(parity, built.data)
         found = list(_fits(parity, sample, built.market))
-        rows += [row for one in found for row in (*share_rows(one), *summary_rows(one))]
+        said = (AVERAGED,) if is_averaged(built.data) else ()
+        rows += [row for one in found for row in (*share_rows(one), *summary_rows(one, said))]
         rows += regression_ledger_rows(found[0])
         rows += latest_rows(found[0], terms)
         rows += _other_rho(parity, built, economies)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -16,12 +17,12 @@ from carrylab.regression.sample import Floats
 CLEAR = 2.0  # the mean signal counts as away from zero beyond this many standard errors
 
 
-def summary_rows(fit: Fit) -> list[Row]:
-    """Every row of section `summary` for one fit, and its warnings."""
+def summary_rows(fit: Fit, said: Sequence[str] = ()) -> list[Row]:
+    """Every row of section `summary` for one fit, and its warnings after those already `said`."""
     place = fit.place()
     rows = [*_levels(fit), *_dispersion(fit)]
     at = fit.leg_of("return")
-    warnings = list(fit.headline.warnings)
+    warnings = [*said, *fit.headline.warnings]
     if at is not None:
         bias = predicted_bias(fit.sample, fit.estimate, at, float(fit.headline.std_error[0, at]))
         rows += _worth(fit, at, bias)

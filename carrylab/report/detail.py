@@ -8,7 +8,7 @@ from typing import Any
 
 import pandas as pd
 
-from carrylab.report.numbers import fixed
+from carrylab.report.numbers import digits_of, fixed
 from carrylab.report.table import (
     Cell,
     Line,
@@ -71,8 +71,9 @@ def _group_lines(group: str, records: list[Record], legs: list[str], own_p: bool
         lower: list[Cell] = []
         for leg in legs:
             record = at[leg, term]
-            upper += [number_cell(record["estimate"]), number_cell(record["r2"], 3) if signal else Cell()]
-            lower += [error_cell(record["std_error"]), Cell()]
+            digits = digits_of(record["std_error"])
+            upper += [number_cell(record["estimate"], digits), number_cell(record["r2"], 3) if signal else Cell()]
+            lower += [error_cell(record["std_error"], digits), Cell()]
             upper += [p_cell(record["p_value"])] if own_p else []
             lower += [Cell()] if own_p else []
         yield Line(group if signal else f"  {term}", (*upper, *(end if signal else blank)))

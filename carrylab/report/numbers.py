@@ -21,6 +21,17 @@ def fixed(value: float, digits: int = 2) -> str:
     return text.removeprefix("-") if float(text) == 0 else text
 
 
+def digits_of(error: float, least: int = 2) -> int:
+    """Decimals that show two figures of a standard error, at least `least`.
+
+    >>> digits_of(0.21), digits_of(0.0004)
+    (2, 5)
+    """
+    if not 0 < error < 0.1**least:
+        return least
+    return math.floor(-math.log10(error)) + 2
+
+
 def percent(value: float, digits: int = 2) -> str:
     """A decimal as a percentage without its sign."""
     return fixed(value * 100, digits)
