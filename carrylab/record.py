@@ -91,9 +91,11 @@ def write_csv(frame: pd.DataFrame, path: Path) -> None:
 
 def read_findings(path: Path) -> pd.DataFrame:
     """The findings of a run folder's CSV, exactly as they were."""
-    frame = pd.read_csv(path, keep_default_na=False, na_values=dict.fromkeys(NUMBERS, ""), float_precision="round_trip")
+    frame = pd.read_csv(path, dtype=str, keep_default_na=False, na_filter=False)
+    for name in NUMBERS:
+        frame[name] = np.array([float(text or "nan") for text in frame[name]])
     for name in TEXTS:
-        frame[name] = _mapped(frame[name].astype(str), _unguard)
+        frame[name] = _mapped(frame[name], _unguard)
     return frame
 
 
