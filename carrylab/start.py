@@ -106,10 +106,13 @@ def _home(heads: Sequence[Head]) -> str:
 def _economies(heads: Sequence[Head]) -> Lines:
     """One question an economy; a currency whose code begins with the economy's is put in front of it."""
     found = sorted({code for head in heads for code in head.codes.get("economy", ()) if len(code) == 2})
-    if not found:
-        return
     texts = [code for head in heads for key in ("currency", "pair") for code in head.codes.get(key, ())]
     currencies = sorted({part for text in texts for part in re.findall("[A-Z]{3}", text)})
+    if not found and any("prices" in head.roles for head in heads):
+        # Share prices without codes: their market still looks up the bill rate by the economy's currency.
+        found, currencies = ["US"], ["USD"]
+    if not found:
+        return
     yield f"\n{'# [economies]':<{BEFORE}} # question: which currency are an economy's rates and prices in?"
     for economy in found:
         like = [currency for currency in currencies if currency.startswith(economy)] or [f"{economy}?"]

@@ -8,20 +8,15 @@ import sys
 from pathlib import Path
 
 import numpy as np
-import numpy as np
 import pytest
 from click.testing import CliRunner
 
 from carrylab.cli import main
-from carrylab.data.calendar import Floats, Tenor, parse_tenor
-from carrylab.data.read import read_market
 from carrylab.data.calendar import parse_tenor
 from carrylab.data.read import read_market
 from carrylab.errors import DataError, StudyError
 from carrylab.markets import MARKETS
 from carrylab.markets.parity import Entity, Parity
-from carrylab.markets import MARKETS
-from carrylab.markets.parity import Parity
 from carrylab.start import start
 from carrylab.start_guess import read_head
 from carrylab.study import read_study
@@ -175,51 +170,12 @@ def test_a_file_of_unknown_content_is_reported_not_placed(tmp_path: Path) -> Non
     assert "growth.csv" not in "".join(re.findall("^file = .*", text, re.MULTILINE))
 
 
-def parities(path: Path) -> dict[tuple[str, str, Tenor], Parity]:
-    """Every parity of a study, by market kind, name and horizon."""
-    study = read_study(path)
-    return {
-        (market.kind, parity.name, parity.horizon): parity
-        for market in study.markets
-        for parity in MARKETS[market.kind](read_market(market), study.economies)
-    }
-
-
-def signals(parity: Parity) -> dict[tuple[str, str, str], Floats]:
-    """The signal of each entity, by codes; a maturity in months, however it was written."""
-    names = [(e.economy, e.currency, e.maturity and parse_tenor(e.maturity).canonical) for e in parity.entities]
-    return {name: parity.signal[:, at] for at, name in enumerate(names)}
-
-
-def test_the_demo_files_with_answers_give_the_signals_of_the_demo_study(tmp_path: Path) -> None:
-    text = begun(tmp_path, *(DEMO / name for name in FILES if name != "growth.csv"))
-    days = 'day_count = { QPD = "act/365f", QVP = "act/365f", QYR = "act/365f", others = "act/360" }'
-    zero, rest = text.split('name = "Currencies"')
-    # What only their makers know: rates of deposits are simple, forwards are points.
-    rest = re.sub("# compounding = .*", 'compounding = "simple"', rest)
-    rest = re.sub("# day_count = .*", days, rest)
-    rest = re.sub("# scale = .*", "scale = { QNK = 100, others = 10000 }", rest)
-    ahead, after = rest.split("[[market.data.forwards]]")
-    after = after.replace('# quote = "pair"', '# quote = "points"', 1)
-    zero = re.sub("# day_count = .*\n", "", zero)
-    parts = f'{zero}name = "Currencies"{ahead}[[market.data.forwards]]{after}'
-    mine, demo = parities(answered(tmp_path, parts, {})), parities(DEMO / "study.toml")
-    shared = set(mine) & set(demo)
-    assert {name for _, name, _ in shared} >= {"forward-spot", "yield-spread", "uncovered-interest", "forward-discount"}
-    assert {name for kind, name, _ in shared if kind == "equities"} == {"dividend-price", "carry"}
-    for key in shared:
-        left, right = signals(mine[key]), signals(demo[key])
-        assert len(set(left) & set(right)) >= 10
-        for entity in set(left) & set(right):
-            np.testing.assert_allclose(left[entity], right[entity], rtol=0, atol=1e-14)
-
-
 def test_one_country_without_codes_can_be_built_once_it_is_answered(tmp_path: Path) -> None:
     rows = "".join(f"{2000 + at // 12}-{at % 12 + 1:02d},{100 + at},{3 + at % 5},4\n" for at in range(36))
     stocks = write(tmp_path, "stocks.csv", "date,price,dividend,bill\n" + rows)
     text = begun(tmp_path, stocks)
     answers = {question(text, "tenor"): 'tenor = "12m"', question(text, "day_count"): ""}
-    ratio = parities(answered(tmp_path, text, answers))["equities", "dividend-price", parse_tenor("12m")]
+    ratio = parities(answered(tmp_path, text, answers))["equities", "dividend-price", "12m"]
     # 2000-01: dividends of 3 on a price of 100.
     assert ratio.signal[0, 0] == pytest.approx(math.log(0.03), abs=1e-15)
     assert ratio.entities[0].currency == "USD"
