@@ -11,6 +11,7 @@ import numpy as np
 from carrylab.audit import Audit
 from carrylab.audit import audit as audit_samples
 from carrylab.data.asof import as_of
+from carrylab.data.calendar import parse_tenor
 from carrylab.data.checks import Check, check_market
 from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
@@ -23,7 +24,7 @@ from carrylab.evidence.summary import summary_rows
 from carrylab.findings import to_frame
 from carrylab.markets import MARKETS
 from carrylab.markets.columns import predictor
-from carrylab.markets.parity import Leg, Parity, identity
+from carrylab.markets.parity import Entity, Leg, Parity, identity
 from carrylab.markets.proof import identity_check
 from carrylab.options import Inference, Market, Study
 from carrylab.regression.covariance import ErrorOptions
@@ -141,9 +142,14 @@ def terms_of(parity: Parity, data: MarketData) -> tuple[tuple[str, ...], Floats]
 
 def _control(table: Table, parity: Parity) -> Floats:
     """An added predictor (T, N), by date or by the entity's own code."""
-    keys = [key for key in table.keys if key not in ("maturity", "tenor")]
-    codes = [entity.group(keys[0]) for entity in parity.entities] if keys else [""] * len(parity.entities)
+    codes = [" ".join(_code(entity, key) for key in table.keys) for entity in parity.entities]
     return as_of(parity.calendar, table, codes)
+
+
+def _code(entity: Entity, key: str) -> str:
+    """The entity's code as a table writes it: a maturity in its canonical form."""
+    code = entity.group(key)
+    return parse_tenor(code).canonical if key == "maturity" and code else code
 
 
 def sample_of(parity: Parity, data: MarketData) -> tuple[Sample, Floats]:

@@ -3,60 +3,78 @@
 from __future__ import annotations
 
 import re
+from typing import NoReturn
 
 import numpy as np
+import numpy.typing as npt
 import pandas as pd
 
 from carrylab.data.calendar import Floats
 from carrylab.errors import DataError
 from carrylab.options import Source
 
-NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?")
+NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?", re.ASCII)
+OTHER = {".": ",", ",": "."}
+Texts = npt.NDArray[np.object_]
 
 
 def read_numbers(source: Source, cells: pd.DataFrame) -> Floats:
     """All cells (rows, columns) as numbers, NaN for an empty cell or a listed missing mark."""
     text = cells.to_numpy(dtype=object)
-    plain = text if source.decimal == "." else np.where(text == "", "", _swapped(source, cells))
+    holes = text == ""
     for mark in source.missing:
-        plain = np.where(text == mark, "", plain)
-    try:
-        values = np.where(plain == "", "nan", plain).astype(np.float64)
-    except ValueError:
-        values = np.array([[_number(source, cells, plain, r, c) for c in range(plain.shape[1])] for r in range(len(plain))])
-    if np.isinf(values).any() or (np.isnan(values) & (plain != "")).any():
-        r, c = np.argwhere(np.isinf(values) | (np.isnan(values) & (plain != "")))[0]
-        raise DataError(f"{_place(source, cells, r, c)}: {text[r, c]!r} is no finite number")
+        holes |= text == mark
+    plain = np.where(holes, "nan", text)
+    if source.decimal == ",":
+        plain = _pointed(source, cells, plain)
+    values = _all_at_once(plain)
+    if values is None or (np.isinf(values) | (np.isnan(values) & ~holes)).any():
+        return _one_by_one(source, cells, plain, holes)
     return values
 
 
-def _swapped(source: Source, cells: pd.DataFrame) -> np.ndarray:
-    text = cells.to_numpy(dtype=object)
-    for r, c in np.argwhere(np.vectorize(lambda cell: "." in cell)(text)):
-        raise DataError(
-            f'{_place(source, cells, r, c)}: {text[r, c]!r} holds a point, but decimal = "," is declared; a column has '
-            "one decimal sign and no thousands marks"
-        )
-    return np.asarray(np.vectorize(lambda cell: cell.replace(",", "."))(text), dtype=object)
+def _all_at_once(plain: Texts) -> Floats | None:
+    """Numbers of cells that are plain, None where one is not: Python's own reading allows 1_000."""
+    if "_" in "".join(plain.ravel()):
+        return None
+    try:
+        return plain.astype(np.float64)
+    except ValueError:
+        return None
 
 
-def _number(source: Source, cells: pd.DataFrame, plain: np.ndarray, r: int, c: int) -> float:
-    cell = str(plain[r, c]).strip().replace("\N{MINUS SIGN}", "-")
-    if cell == "":
-        return np.nan
-    if NUMBER.fullmatch(cell):
-        return float(cell)
-    seen = cells.iat[r, c]
-    if re.fullmatch(r"[+-]?\d+,\d+", str(seen)):
+def _pointed(source: Source, cells: pd.DataFrame, plain: Texts) -> Texts:
+    """Decimal commas as points; a point is refused, for a file has one decimal sign and no thousands marks."""
+    flat = plain.ravel()
+    if "." in "".join(flat):
+        at = next(number for number, cell in enumerate(flat) if "." in cell)
+        _refuse(source, cells, divmod(at, plain.shape[1]))
+    return np.array([cell.replace(",", ".") for cell in flat], dtype=object).reshape(plain.shape)
+
+
+def _one_by_one(source: Source, cells: pd.DataFrame, plain: Texts, holes: npt.NDArray[np.bool_]) -> Floats:
+    """Cells with spaces around them or a typographic minus are read, the first that is no number is refused."""
+    values = np.full(plain.shape, np.nan)
+    for r, c in np.argwhere(~holes):
+        cell = plain[r, c].strip().replace("\N{MINUS SIGN}", "-")
+        if cell == "":
+            continue
+        if not NUMBER.fullmatch(cell) or np.isinf(float(cell)):
+            _refuse(source, cells, (r, c))
+        values[r, c] = float(cell)
+    return values
+
+
+def _refuse(source: Source, cells: pd.DataFrame, at: tuple[int, int]) -> NoReturn:
+    seen = str(cells.iloc[at])
+    place = f"{source.file}: row {cells.index[at[0]]}, column {cells.columns[at[1]]!r}: {seen!r}"
+    other = OTHER[source.decimal]
+    if re.fullmatch(rf"\s*[+-]?\d*\{other}\d+\s*", seen):
         raise DataError(
-            f'{_place(source, cells, r, c)}: {seen!r} holds a comma; one decimal sign a file, declare decimal = "," where '
-            "it is the comma"
+            f"{place} has the decimal sign {other!r}, but {source.decimal!r} holds in this file; allowed is one sign, "
+            f'declared with decimal = "{other}" or "{source.decimal}", and no thousands marks'
         )
     raise DataError(
-        f"{_place(source, cells, r, c)}: {seen!r} is no number; allowed are numbers such as -1.25 and empty cells; list "
-        f'a mark for missing under missing = ["{seen}"]'
+        f"{place} is no number; allowed are numbers such as -1{source.decimal}25 without thousands marks, and empty "
+        f'cells; a mark for a missing value must be listed: missing = ["{seen.strip()}"]'
     )
-
-
-def _place(source: Source, cells: pd.DataFrame, r: int, c: int) -> str:
-    return f"{source.file}: row {cells.index[r]}, column {cells.columns[c]}"

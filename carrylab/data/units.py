@@ -6,7 +6,6 @@ from collections.abc import Callable, Mapping
 from types import MappingProxyType
 
 import numpy as np
-from numpy.typing import ArrayLike
 
 from carrylab.data.calendar import Days, Floats
 from carrylab.options import Compounding, DayCount, Unit
@@ -20,7 +19,7 @@ def to_decimal(values: Floats, unit: Unit) -> Floats:
     return values * UNITS[unit]
 
 
-def log_rate(rate: Floats, tau: ArrayLike, years: ArrayLike, compounding: Compounding) -> Floats:
+def log_rate(rate: Floats, tau: Floats | float, years: Floats | float, compounding: Compounding) -> Floats:
     """Continuously compounded rate per year such that years x result is the log growth over the whole time.
 
     annual and m times a year: m ln(1 + R/m). simple: ln(1 + R tau) / years. discount: -ln(1 - d tau) / years.
@@ -32,17 +31,15 @@ def log_rate(rate: Floats, tau: ArrayLike, years: ArrayLike, compounding: Compou
     with np.errstate(invalid="ignore", divide="ignore"):
         if compounding in TIMES_A_YEAR:
             m = TIMES_A_YEAR[compounding]
-            return np.asarray(m * _log(1.0 + rate / m))
-        growth = {
-            "simple": lambda: 1.0 + rate * tau,
-            "discount": lambda: 1.0 / (1.0 - rate * tau),
-            "discount factor": lambda: 1.0 / rate,
-        }[compounding]()
-        return np.asarray(_log(growth) / years)
+            return m * _log(1.0 + rate / m)
+        if compounding == "simple":
+            return _log(1.0 + rate * tau) / years
+        price = rate if compounding == "discount factor" else 1.0 - rate * tau
+        return -_log(price) / years
 
 
 def _log(growth: Floats) -> Floats:
-    """ln, with NaN where growth is not above zero."""
+    """ln, with NaN where a growth factor or a price is not above zero."""
     return np.log(np.where(growth > 0, growth, np.nan))
 
 
@@ -80,7 +77,9 @@ def _act_act(start: Days, end: Days) -> Floats:
 def _leap_time(days: Days) -> Floats:
     year = days.astype("datetime64[Y]")
     length = ((year + 1).astype("datetime64[D]") - year.astype("datetime64[D]")).astype(np.float64)
-    return year.astype(np.float64) + (days - year.astype("datetime64[D]")).astype(np.float64) / length
+    elapsed: Floats = (days - year.astype("datetime64[D]")).astype(np.float64)
+    time: Floats = year.astype(np.float64) + elapsed / length
+    return time
 
 
 DAY_COUNTS: Mapping[str, Callable[[Days, Days], Floats]] = MappingProxyType(
