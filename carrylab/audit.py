@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
@@ -83,7 +84,12 @@ class Audit:
             f"{quantity}, {counts[quantity, against]} against {against}: largest relative difference {gap:.1e}"
             for (quantity, against), gap in self.largest().items()
         ]
-        return compared + [f"not compared: {text}" for text in self.not_compared]
+        names = {row.sample for row in self.comparisons}
+        split = (text.partition(": ") for text in self.not_compared)
+        reasons = Counter(rest if name in names else f"{name}{colon}{rest}" for name, colon, rest in split)
+        return compared + [
+            f"not compared: {reason}" + (f" ({count} samples)" if count > 1 else "") for reason, count in reasons.items()
+        ]
 
 
 def audit(samples: Sequence[tuple[str, Sample]], effects: Effects, options: ErrorOptions) -> Audit:
