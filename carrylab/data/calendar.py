@@ -28,7 +28,7 @@ _MONTHS = {"m": 1, "q": 3, "y": 12}
 _DAYS = {"d": 1, "w": 7}
 
 
-@dataclass(frozen=True, slots=True, order=True)
+@dataclass(frozen=True, slots=True)
 class Tenor:
     """A length of time: whole months plus whole days.
 
@@ -58,15 +58,24 @@ class Tenor:
             return f"{self.days}d"
         return f"{self.months}m{self.days:+d}d"
 
+    @property
+    def in_weeks(self) -> bool:
+        """Whether it was given in weeks, which are calendar weeks on every interval."""
+        return self.text.endswith("w")
+
     def __add__(self, other: Tenor) -> Tenor:
-        return Tenor(self.months + other.months, self.days + other.days)
+        return _tenor(self.months + other.months, self.days + other.days, self.in_weeks and other.in_weeks)
 
     def __sub__(self, other: Tenor) -> Tenor:
-        return Tenor(self.months - other.months, self.days - other.days)
+        return _tenor(self.months - other.months, self.days - other.days, self.in_weeks and other.in_weeks)
 
     def times(self, count: int) -> Tenor:
         """`count` of these lengths one after the other."""
-        return Tenor(self.months * count, self.days * count)
+        return _tenor(self.months * count, self.days * count, self.in_weeks)
+
+
+def _tenor(months: int, days: int, in_weeks: bool) -> Tenor:
+    return Tenor(months, days, f"{days // 7}w" if in_weeks else "")
 
 
 def parse_tenor(text: str) -> Tenor:
@@ -182,20 +191,23 @@ class Window:
 
 
 def steps_in(horizon: Tenor, interval: Interval) -> int | None:
-    """Whole periods in a horizon, or None where it is no whole number of them."""
+    """Whole periods in a horizon, or None where it is no whole number of them.
+
+    On the day interval `5d` is five observed days; a week is seven days of the calendar, whatever was observed.
+    """
     if interval in MONTHS_IN:
         size = MONTHS_IN[interval]
         return horizon.months // size if not horizon.days and horizon.months % size == 0 else None
     if horizon.months:
         return None
     if interval == "day":
-        return horizon.days
+        return None if horizon.in_weeks else horizon.days
     return horizon.days // 7 if horizon.days % 7 == 0 else None
 
 
 def horizon_years(horizon: Tenor, interval: Interval) -> float:
     """Length of a horizon in years; on the day interval a horizon in days counts trading days, 252 a year."""
-    if interval == "day" and not horizon.months:
+    if interval == "day" and steps_in(horizon, interval) is not None:
         return horizon.days / TRADING_DAYS_A_YEAR
     return horizon.years
 
@@ -203,7 +215,8 @@ def horizon_years(horizon: Tenor, interval: Interval) -> float:
 def window(calendar: Calendar, horizon: Tenor, max_gap: int | None = None) -> Window:
     """Find the row that ends each origin's horizon.
 
-    A whole number of periods is counted in periods. Otherwise (a month on a day or week calendar) the outcome
+    A whole number of periods is counted in periods. Otherwise (a month on a day or week calendar, a week on a day
+    calendar) the outcome
     is read in the last period that ends on or before t + h, at most `max_gap` days earlier (5 on a day
     calendar, 6 on a week calendar). Raises ValueError where a month, quarter or year calendar cannot hold the
     horizon.
