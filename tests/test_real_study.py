@@ -155,3 +155,9 @@ def test_averaged_prices_give_no_one_period_errors(results) -> None:
     rows = found[(found["market"] == "Stock index") & (found["section"] == "shares") & (found["method"] != "")]
     assert len(rows) > 0
     assert not rows["method"].str.contains("one-period").any()
+
+
+def test_the_ledger_counts_every_column_of_a_file(results) -> None:
+    # Price, dividend and bill rate of 558 months stand in one file.
+    line = next(line.split() for line in results.report(100).splitlines() if line.strip().startswith("equities.csv"))
+    assert (line[1], line[2], line[-1]) == ("3", "1,674", "1,674")

@@ -139,11 +139,14 @@ def ledger_table(findings: pd.DataFrame) -> Table | None:
         return None
     reasons = list(dict.fromkeys(rows["term"]))
     files = rows["leg"].str.split(": ", n=1).str[1]
-    once = rows.assign(file=files).drop_duplicates(["file", "group", "term"])
+    once = rows.assign(file=files).drop_duplicates(["leg", "group", "term"])
     lines = []
     for file, own in once.groupby("file", sort=False):
         sums = own.groupby("term")["estimate"].sum()
-        cells = (count_cell(own["group"].nunique()), *(count_cell(sums[reason]) for reason in reasons))
+        cells = (
+            count_cell(len(own[["leg", "group"]].drop_duplicates())),
+            *(count_cell(sums[reason]) for reason in reasons),
+        )
         lines.append(Line(str(file), cells))
     return Table("Row ledger: cells read, dropped and why, and used", ("series", *reasons), tuple(lines), corner="file")
 
