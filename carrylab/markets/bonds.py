@@ -16,20 +16,20 @@ from types import MappingProxyType
 
 import numpy as np
 
-from carrylab.data.calendar import Calendar, Floats, Tenor, Window, lead, window
+from carrylab.data.calendar import MONTHS_IN, Calendar, Floats, Tenor, Window, lead, steps_in, window
 from carrylab.data.panel import curves
 from carrylab.data.read import MarketData
 from carrylab.errors import StudyError
 from carrylab.markets.curves import YieldCurves
 from carrylab.markets.parity import Entity, Leg, Parity
-from carrylab.markets.tenors import step_tenor
+from carrylab.markets.tenors import SAME, step_tenor
 
 CARRY_NOTE = "for a zero-coupon bond the return on an unchanged curve is the forward-spot spread"
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Built:
-    """Signal and legs (T, N) of one maturity: each leg's name, role, weight and null beside its values."""
+    """Signal and legs (T, N) of one maturity."""
 
     signal: Floats
     legs: tuple[Leg, ...]
@@ -37,7 +37,7 @@ class Built:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Bonds:
-    """The curves of one market with what its recipes need: calendar, largest gap, `short` and the timing."""
+    """The curves of one market, its data and options, and the currency of each economy."""
 
     data: MarketData
     curves: YieldCurves
@@ -54,51 +54,83 @@ class Bonds:
 
 
 def parities(data: MarketData, economies: Mapping[str, str]) -> list[Parity]:
-    """Every bond parity of the study: one a horizon, and one a maturity for the two distant ones."""
+    """Every bond parity of the study: one a horizon, and one a maturity for the two distant ones.
+
+    Raises StudyError for a maturity or horizon that cannot be, DataError for a maturity that no rule gives.
+    """
     quoted = curves(data.tables["zero_yields"], data.calendar, "economy", "maturity")
     bonds = Bonds(data, YieldCurves(quoted, data.market), economies)
     found = []
     for name in data.market.parities:
         if name in DISTANT:
-            found += [_distant(bonds, name, n) for n in _maturities(bonds, data.market.short)]
+            found += _distant(bonds, name)
         else:
             found += [_near(bonds, name, horizon) for horizon in data.market.horizons]
     return found
 
 
-def _maturities(bonds: Bonds, above: Tenor | None) -> tuple[Tenor, ...]:
-    """The maturities of the study, or all quoted ones above the holding period."""
+def _maturities(bonds: Bonds, above: Tenor) -> tuple[Tenor, ...]:
+    """The maturities of the study, or all quoted ones, longer than the holding period."""
     market = bonds.data.market
-    floor = above.years if above is not None else 0.0
-    if not market.maturities:
-        return tuple(tenor for tenor in bonds.curves.quoted.tenors if tenor.years > floor + 1e-9)
-    for n in market.maturities:
-        if n.years <= floor + 1e-9:
-            raise StudyError(
-                f"market {market.name!r}, key maturities: {str(n)!r} is not longer than {above}; allowed are longer "
-                "maturities, as the bond must live on when the holding period ends"
-            )
-    return market.maturities
+    listed = market.maturities or bonds.curves.quoted.tenors
+    longer = tuple(n for n in listed if n.years > above.years + SAME)
+    short = [str(n) for n in market.maturities if n not in longer]
+    if short or not longer:
+        seen = f"{short[0]!r} is" if short else f"of {', '.join(map(str, listed))} none is"
+        raise StudyError(
+            f"market {market.name!r}, key maturities: {seen} not longer than {above}; allowed are longer maturities, "
+            "as the bond must live on when the holding period ends"
+        )
+    return longer
 
 
 def _near(bonds: Bonds, name: str, h: Tenor) -> Parity:
+    _refuse_trading_days(bonds, "horizons", h)
+    bonds.curves.used.clear()
     maturities = _maturities(bonds, h)
     at = bonds.window(h)
     built = [NEAR[name](bonds, n, h, at) for n in maturities]
     return _parity(bonds, (name, h, at), maturities, built)
 
 
-def _distant(bonds: Bonds, name: str, n: Tenor) -> Parity:
+def _distant(bonds: Bonds, name: str) -> list[Parity]:
+    """One parity a maturity n, its horizon n less `short`."""
     short = bonds.data.market.short
     if short is None:
-        raise StudyError(f"market {bonds.data.market.name!r}: the key short is missing")
-    horizon = n - short
-    return _parity(bonds, (name, horizon, bonds.window(horizon)), (n,), [DISTANT[name](bonds, n, short)])
+        raise StudyError(
+            f'market {bonds.data.market.name!r}: the key short is missing; {name} needs it, such as short = "12m"'
+        )
+    _refuse_trading_days(bonds, "short", short)
+    found = []
+    for n in _maturities(bonds, short):
+        bonds.curves.used.clear()
+        _require_whole(bonds, name, n, short)
+        horizon = n - short
+        found.append(_parity(bonds, (name, horizon, bonds.window(horizon)), (n,), [DISTANT[name](bonds, n, short)]))
+    return found
 
 
-def _parity(
-    bonds: Bonds, what: tuple[str, Tenor, Window], maturities: tuple[Tenor, ...], built: list[Built]
-) -> Parity:
+def _refuse_trading_days(bonds: Bonds, key: str, length: Tenor) -> None:
+    if bonds.calendar.interval == "day" and steps_in(length, "day") is not None:
+        raise StudyError(
+            f"market {bonds.data.market.name!r}, key {key}: {str(length)!r} counts trading days, in which no maturity "
+            "is quoted; allowed for bonds are months, such as 1m, and weeks"
+        )
+
+
+def _require_whole(bonds: Bonds, name: str, n: Tenor, short: Tenor) -> None:
+    """The horizon n less `short` must be whole periods; to maturity n is a multiple of `short`, and that whole."""
+    market, interval = bonds.data.market, bonds.calendar.interval
+    place = f"market {market.name!r}, key maturities: {str(n)!r}"
+    rolls = name == "yield-spread-to-maturity"
+    if rolls and n != short.times(round(n.years / short.years)):
+        raise StudyError(f"{place} is no whole number of {short}; allowed with {name} are multiples of short")
+    step = short if rolls else n - short
+    if interval in MONTHS_IN and steps_in(step, interval) is None:
+        raise StudyError(f"{place} with short = {short}: {step} is no whole number of {interval}s, as {name} needs")
+
+
+def _parity(bonds: Bonds, what: tuple[str, Tenor, Window], maturities: tuple[Tenor, ...], built: list[Built]) -> Parity:
     """Stack the maturities side by side: entities are economy by maturity."""
     name, horizon, at = what
     codes = bonds.curves.quoted.codes
@@ -135,7 +167,7 @@ def forward_spot(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Built:
     price, rest = bonds.curves.price, n - h
     riskless = h.years * bonds.curves.yields(h)
     later = lead(bonds.curves.yields(rest), at)
-    steps = monthly_returns(bonds, n, h, at)
+    steps = one_period_returns(bonds, n, h)
     return Built(
         price(rest) - price(n) - riskless,
         (
@@ -165,7 +197,7 @@ def yield_spread(bonds: Bonds, n: Tenor, m: Tenor, at: Window) -> Built:
     scale = m.years / rest.years
     later = lead(bonds.curves.yields(rest), at)
     excess = -rest.years * later - bonds.curves.price(n) - m.years * bonds.curves.yields(m)
-    steps = monthly_returns(bonds, n, m, at)
+    steps = one_period_returns(bonds, n, m)
     share = None if steps is None else steps / rest.years
     return Built(
         scale * (bonds.curves.yields(n) - bonds.curves.yields(m)),
@@ -195,11 +227,6 @@ def forward_spot_far(bonds: Bonds, n: Tenor, k: Tenor) -> Built:
 def yield_spread_to_maturity(bonds: Bonds, n: Tenor, m: Tenor) -> Built:
     """Yield spread against the average of future m-rates and the average return over rolling m-bonds."""
     k = round(n.years / m.years)
-    if abs(k * m.years - n.years) > 1e-9:
-        raise StudyError(
-            f"market {bonds.data.market.name!r}: maturity {n} is no whole number of {m}; allowed with "
-            "yield-spread-to-maturity are multiples of short"
-        )
     short = bonds.curves.yields(m)
     average = np.zeros_like(short)
     returns = np.zeros_like(short)
@@ -227,7 +254,7 @@ def _negated(steps: Floats | None) -> Floats | None:
     return None if steps is None else -steps
 
 
-def monthly_returns(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Floats | None:
+def one_period_returns(bonds: Bonds, n: Tenor, h: Tenor) -> Floats | None:
     """Excess returns of the bought bond period by period, (T, N, H) by origin and step; None where they are unknown.
 
     In step s the n-bond has n - (s-1) steps left and the h-bond h - (s-1): its return less that of the h-bond. They
@@ -238,12 +265,13 @@ def monthly_returns(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Floats | No
     if step is None or averaged:
         return None
     count = round(h.years / step.years)
-    if abs(count * step.years - h.years) > 1e-9:
+    if h != step.times(count):
         return None
     lives = [(n - step.times(s), h - step.times(s)) for s in range(count + 1)]
-    if not all(bonds.curves.quotes(life) for pair in lives for life in pair if life.years > 1e-9):
+    if not all(bonds.curves.quotes(life) for pair in lives for life in pair if life != Tenor()):
         return None
-    ahead = [_ahead(bonds, bonds.curves.price(long) - bonds.curves.price(short), step.times(s)) for s, (long, short) in enumerate(lives)]
+    price = bonds.curves.price
+    ahead = [_ahead(bonds, price(long) - price(short), step.times(s)) for s, (long, short) in enumerate(lives)]
     return np.stack([ahead[s + 1] - ahead[s] for s in range(count)], axis=2)
 
 

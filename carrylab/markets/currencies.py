@@ -113,9 +113,11 @@ def _quoted_forward(market: Market, world: Currencies, horizon: Tenor) -> tuple[
         raise DataError(f"market {market.name!r}: forward-discount needs forwards; declare them in its data")
     # Between quoted lengths the discount is interpolated per year, not the price.
     spot = Panel(world.codes, world.spot).pick(world.forwards.codes)[:, :, None]
-    per_year = Curves(world.forwards.codes, world.forwards.tenors, (spot - world.forwards.values) / world.forwards.years)
+    per_year = Curves(
+        world.forwards.codes, world.forwards.tenors, (spot - world.forwards.values) / world.forwards.years
+    )
     discounts, notes = rates_at(per_year, horizon, market, "forwards")
-    discount = Panel(per_year.codes, discounts).pick(world.codes) * horizon.years
+    discount = Panel(per_year.codes, discounts).pick(world.codes) * horizon_years(horizon, market.interval)
     return world.spot - discount, notes
 
 
@@ -129,12 +131,17 @@ def _one_step(
     step = step_tenor(data.calendar)
     quoted = world.rates if by_rates else world.forwards
     notes: tuple[str, ...] = ()
-    if step is not None and quoted is not None and same_length(quoted, step) is not None:
+    if at.overlap == 0:
+        price = forward
+    elif step is not None and quoted is not None and same_length(quoted, step.years) is not None:
         price, _ = forward_price(data, world, step, by_rates=by_rates)
     else:
-        steps = np.where(at.ends >= 0, at.ends - np.arange(len(at.ends)), 1)[:, None]
+        # Past the last whole horizon, too, the spread is earned over a whole horizon.
+        steps = np.where(at.ends >= 0, at.ends - np.arange(len(at.ends)), at.overlap + 1)[:, None]
         price = world.spot - (world.spot - forward) / steps
-        notes = (f"one-period excess returns take the {horizon} spread in equal parts, as no one-period rate is quoted",)
+        notes = (
+            f"one-period excess returns take the {horizon} spread in equal parts, as no one-period rate is quoted",
+        )
     outcomes = np.full_like(world.spot, np.nan)
     outcomes[1:] = world.spot[1:] - price[:-1]
     return outcomes, notes

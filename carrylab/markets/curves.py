@@ -11,13 +11,12 @@ from scipy.interpolate import CubicSpline
 from carrylab.data.calendar import Floats, Tenor
 from carrylab.data.panel import Curves
 from carrylab.errors import DataError
+from carrylab.markets.tenors import same_length
 from carrylab.options import Market
-
-SAME = 1e-9  # years
 
 
 class YieldCurves:
-    """Log zero yields (T, N, M) with the rule for maturities that are not quoted; `used` notes which it filled."""
+    """Log zero yields (T, N, M) with the rule for maturities not quoted; `used` names those it filled since cleared."""
 
     def __init__(self, quoted: Curves, market: Market) -> None:
         self.quoted = quoted
@@ -28,29 +27,30 @@ class YieldCurves:
     def quotes(self, maturity: Tenor) -> bool:
         """Whether this maturity is quoted or the rule can fill it."""
         years = self.quoted.years
-        exact = bool((np.abs(years - maturity.years) < SAME).any())
-        return exact or (self.market.missing_maturity != "exact" and years[0] < maturity.years < years[-1])
+        fills = self.market.missing_maturity != "exact" and years[0] < maturity.years < years[-1]
+        return bool(fills) or same_length(self.quoted, maturity.years) is not None
 
     def yields(self, maturity: Tenor) -> Floats:
         """Log yield per year (T, N) of one maturity; DataError where neither quotes nor the rule give it."""
         key = round(maturity.years, 9)
         if key not in self._known:
             self._known[key] = self._find(maturity)
+        if same_length(self.quoted, maturity.years) is None:
+            self.used.add(str(maturity))
         return self._known[key]
 
     def price(self, maturity: Tenor) -> Floats:
         """Log price -n y(n) (T, N); zero for a bond that has matured."""
-        if not maturity.months and not maturity.days:
+        if maturity == Tenor():
             return np.zeros(self.quoted.values.shape[:2])
         return -maturity.years * self.yields(maturity)
 
     def _find(self, maturity: Tenor) -> Floats:
-        same = np.flatnonzero(np.abs(self.quoted.years - maturity.years) < SAME)
-        if len(same):
-            return self.quoted.values[:, :, same[0]]
+        same = same_length(self.quoted, maturity.years)
+        if same is not None:
+            return self.quoted.values[:, :, self.quoted.tenors.index(same)]
         if not self.quotes(maturity):
             raise DataError(self._missing(maturity))
-        self.used.add(str(maturity))
         return RULES[self.market.missing_maturity](self.quoted.years, self.quoted.values, maturity.years)
 
     def _missing(self, maturity: Tenor) -> str:

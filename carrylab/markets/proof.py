@@ -13,7 +13,9 @@ def identity_check(parity: Parity) -> Check:
     series = f"{parity.name}, {parity.horizon}"
     proof = identity(parity)
     if proof is None:
-        return Check("I1", "note", "", f"{parity.market}: {series}", "", "", "legs without weights", "no identity is claimed")
+        return Check(
+            "I1", "note", "", f"{parity.market}: {series}", "", "", "legs without weights", "no identity is claimed"
+        )
     where = (proof.date, proof.date)
     if proof.gap > parity.tolerance:
         seen = f"|signal - sum of weight x leg| is {proof.gap:.3g} at {proof.entity}, above {parity.tolerance:g}"
