@@ -116,14 +116,15 @@ def _widths(source: Source, text: str, separator: str) -> Iterator[tuple[int, in
     if '"' not in text:
         yield from ((number, line.count(separator) + 1 if line else 0) for number, line in enumerate(lines, 1))
         return
-    rows = csv.reader(lines, delimiter=separator, strict=True)
+    rows, first = csv.reader(lines, delimiter=separator, strict=True), 1
     try:
         for row in rows:
-            yield rows.line_num, len(row)
+            yield first, len(row)
+            first = rows.line_num + 1
     except csv.Error as wrong:
         raise DataError(
-            f"{source.file}: row {rows.line_num}: a quotation mark is not closed, or more follows it ({wrong}); "
-            "allowed are quotation marks around a whole cell, doubled inside it"
+            f"{source.file}: row {first}: a quotation mark is not closed, or more follows it ({wrong}); allowed are "
+            "quotation marks around a whole cell, doubled inside it"
         ) from None
 
 

@@ -13,7 +13,7 @@ from carrylab.data.calendar import Floats
 from carrylab.errors import DataError
 from carrylab.options import Source
 
-NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?", re.ASCII)
+NUMBER = re.compile(r"[+-]?(\d+(\.\d*)?|\.\d+)([eE][+-]?\d+)?")
 OTHER = {".": ",", ",": "."}
 Texts = npt.NDArray[np.object_]
 
