@@ -12,7 +12,7 @@ from carrylab.data.calendar import Calendar, Interval, make_calendar
 from carrylab.data.dates import bound, read_dates
 from carrylab.data.files import read_cells
 from carrylab.data.ledger import Span, account
-from carrylab.data.shape import KEYS, find_layout, long_rows
+from carrylab.data.shape import find_layout, long_rows
 from carrylab.errors import DataError
 from carrylab.options import Market, PanelColumns, Source
 
@@ -103,11 +103,10 @@ def _table(source: Source, span: Span, panel: PanelColumns | None) -> Table:
     cells = read_cells(source)
     layout = find_layout(source, list(cells.columns), panel)
     days, numbers = read_dates(source, cells[layout.date], span.interval, coarse=span.every_date)
-    frame = long_rows(source, cells, layout)
+    frame, keys = long_rows(source, cells, layout)
     repeat = len(frame) // len(cells)
     frame.insert(2, "date", np.repeat(days.astype("datetime64[s]"), repeat))
     frame.insert(3, "ordinal", np.repeat(numbers, repeat))
-    keys = tuple(key for key in KEYS if key in frame.columns[4:])
     names = [*layout.values] or ["value"]
     kept, ledger = account(source, frame, keys=keys, names=names, span=span)
     return Table(source, keys, kept, ledger)

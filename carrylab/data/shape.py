@@ -18,6 +18,7 @@ from carrylab.options import PanelColumns, Source
 
 KEYS = ("economy", "currency", "pair", "index", "entity", "maturity", "tenor")
 LENGTHS = ("maturity", "tenor")
+RESERVED = ("file", "row", "date", "ordinal", "entity", "series")  # columns of a table and of its account
 Codes: TypeAlias = "pd.Categorical[str]"
 
 
@@ -69,6 +70,12 @@ def _panel_layout(source: Source, words: Mapping[str, str], panel: PanelColumns)
     entity = panel.entity or ("entity" if "entity" in words else None)
     for word in (*wanted, *([entity] if entity else [])):
         require_column(source, words, word)
+    for word in wanted:
+        if word in RESERVED:
+            raise DataError(
+                f"{source.file}: a signal, control or leg may not be called {word!r}; give it another name with "
+                f'columns = {{ {words[word]} = "my {word}" }} and use that in the study'
+            )
     keys = {"entity": words[entity]} if entity else {}
     return Layout(words["date"], keys, {word: words[word] for word in wanted}, {})
 
@@ -124,8 +131,8 @@ def _values(source: Source, rest: Mapping[str, str]) -> dict[str, str]:
     )
 
 
-def long_rows(source: Source, cells: pd.DataFrame, layout: Layout) -> pd.DataFrame:
-    """One row a date and series: file, row, the keys as categories of their codes, and the values."""
+def long_rows(source: Source, cells: pd.DataFrame, layout: Layout) -> tuple[pd.DataFrame, tuple[str, ...]]:
+    """One row a date and series: file, row, the keys as categories of their codes, and the values; and the keys."""
     repeat = len(layout.wide) or 1
     frame = pd.DataFrame({"row": np.repeat(cells.index.to_numpy(), repeat)})
     frame.insert(0, "file", pd.Series(_one_code(source.file, len(frame))))
@@ -135,14 +142,16 @@ def long_rows(source: Source, cells: pd.DataFrame, layout: Layout) -> pd.DataFra
         key: _one_code(_code(f"{source.file}: the study's {key}", key, code), len(frame))
         for key, code in _constants(source).items()
     }
-    for key in KEYS:
-        if key in columns:
-            frame[key] = columns[key]
+    keys = tuple(key for key in KEYS if key in columns)
+    for key in keys:
+        frame[key] = columns[key]
     if layout.wide:
         frame["value"] = read_numbers(source, cells[list(layout.wide)]).ravel()
-        return frame
+        return frame, keys
     numbers = read_numbers(source, cells[list(layout.values.values())])
-    return frame.assign(**{name: numbers[:, at] for at, name in enumerate(layout.values)})
+    for at, name in enumerate(layout.values):
+        frame[name] = numbers[:, at]
+    return frame, keys
 
 
 def _constants(source: Source) -> dict[str, str]:
