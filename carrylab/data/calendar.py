@@ -63,6 +63,12 @@ class Tenor:
         """Whether it was given in weeks, which are calendar weeks on every interval."""
         return self.text.endswith("w")
 
+    def __lt__(self, other: Tenor) -> bool:
+        return self.years < other.years
+
+    def __le__(self, other: Tenor) -> bool:
+        return self.years <= other.years
+
     def __add__(self, other: Tenor) -> Tenor:
         return _tenor(self.months + other.months, self.days + other.days, self.in_weeks and other.in_weeks)
 

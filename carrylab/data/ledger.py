@@ -57,7 +57,7 @@ def account(
         book.note(reason, rows["series"].to_numpy()[gone])
         return rows[~gone] if gone.any() else rows
 
-    frame = without(frame, "missing", np.isnan(frame[list(names)].to_numpy()).all(axis=1))
+    frame = without(frame, "missing", _missing(frame, names))
     frame = without(frame, "outside", _outside(frame, span))
     _require_above_zero(source, frame, labels, names)
     frame = frame.iloc[np.lexsort((frame["row"], frame["date"], frame["series"]))]
@@ -75,6 +75,13 @@ def _series(frame: pd.DataFrame, keys: tuple[str, ...]) -> tuple[Ints, list[str]
     _, first, series = np.unique(number, return_index=True, return_inverse=True)
     texts = [frame[key].iloc[first].astype(str) for key in keys]
     return series, [" ".join(codes) for codes in zip(*texts, strict=True)] or ["all"]
+
+
+def _missing(frame: pd.DataFrame, names: Sequence[str]) -> Flags:
+    """Rows without any value; a two-way quote needs both sides, as one side alone has no middle."""
+    holes: Flags = np.isnan(frame[list(names)].to_numpy())
+    gone: Flags = holes.any(axis=1) if list(names) == ["bid", "ask"] else holes.all(axis=1)
+    return gone
 
 
 def _outside(frame: pd.DataFrame, span: Span) -> Flags:

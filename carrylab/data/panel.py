@@ -82,7 +82,12 @@ def curves(tables: Sequence[Table], calendar: Calendar, key: str, length: str) -
     for table in tables:
         frame = table.frame
         rows = calendar.locate(frame["ordinal"].to_numpy())
-        _put(table, values, (rows, _places(frame, key, codes), _places(frame, length, names)), _log_rates(table, key, length))
+        _put(
+            table,
+            values,
+            (rows, _places(frame, key, codes), _places(frame, length, names)),
+            _log_rates(table, key, length),
+        )
     return Curves(tuple(codes), tuple(parse_tenor(name) for name in names), values)
 
 
@@ -93,8 +98,8 @@ def _order(name: str) -> tuple[float, str]:
 def _codes(table: Table, key: str) -> list[str]:
     if key not in table.keys:
         raise DataError(
-            f"{table.source.file}: no column {key!r} for {table.source.role}; add it, or give it for the whole file with "
-            f'{key} = "..."'
+            f"{table.source.file}: no column {key!r} for {table.source.role}; add it, or give it for the whole file "
+            f'with {key} = "..."'
         )
     return [str(code) for code in table.frame[key].unique()]
 
@@ -106,11 +111,13 @@ def _places(frame: pd.DataFrame, key: str, codes: Sequence[str]) -> np.typing.ND
 
 
 def _mid(frame: pd.DataFrame) -> Floats:
-    """The value, or the two-way quote's middle in logs, so that turning the quote round is exact."""
+    """The value, or the two-way quote's middle in logs, so that turning the quote round is exact.
+
+    A quote with one side only has no middle.
+    """
     if "value" in frame.columns:
-        return frame["value"].to_numpy()
-    bid, ask = np.log(frame["bid"].to_numpy()), np.log(frame["ask"].to_numpy())
-    return np.exp(np.where(np.isnan(bid), ask, np.where(np.isnan(ask), bid, (bid + ask) / 2)))
+        return np.asarray(frame["value"], dtype=np.float64)
+    return np.sqrt(np.asarray(frame["bid"] * frame["ask"], dtype=np.float64))
 
 
 def _put(table: Table, into: Floats, where: tuple[np.typing.NDArray[np.int64], ...], values: Floats) -> None:
@@ -118,8 +125,13 @@ def _put(table: Table, into: Floats, where: tuple[np.typing.NDArray[np.int64], .
     there = into[where]
     clash = np.isfinite(there) & np.isfinite(values) & ~np.isclose(there, values, rtol=1e-9, atol=0)
     if clash.any():
-        row = table.frame.iloc[int(np.flatnonzero(clash)[0])]
-        raise DataError(f"{table.source.file}: row {row['row']} gives a value that another source gives differently")
+        at = int(np.flatnonzero(clash)[0])
+        row = table.frame.iloc[at]
+        series = " ".join(str(row[key]) for key in table.keys)
+        raise DataError(
+            f"{table.source.file}: row {row['row']}: {series} is {values[at]:.10g}, but {there[at]:.10g} in another "
+            f"file of {table.source.role}; allowed is one value a series and period; keep one of the files"
+        )
     into[where] = values
 
 
@@ -136,11 +148,9 @@ def by_code(mapping: Mapping[str, object], codes: Sequence[str], source: Source,
 
 def _log_rates(table: Table, key: str, length: str) -> Floats:
     frame, source = table.frame, table.source
-    rate = frame["value"].to_numpy()
-    if source.compounding != "discount factor":
-        rate = to_decimal(rate, source.unit)
+    rate = to_decimal(frame["value"].to_numpy(), source.unit)
     tenors = [parse_tenor(str(name)) for name in frame[length].cat.categories]
-    of_row = frame[length].cat.codes.to_numpy()
+    of_row = frame[length].cat.codes.to_numpy().astype(np.int64)
     years = np.array([tenor.years for tenor in tenors])[of_row]
     tau = years
     if source.compounding in ("simple", "discount"):
@@ -148,9 +158,10 @@ def _log_rates(table: Table, key: str, length: str) -> Floats:
     found = log_rate(rate, tau, years, source.compounding)
     if np.isnan(found).any():
         row = frame.iloc[int(np.flatnonzero(np.isnan(found))[0])]
+        what = "discount factor" if source.compounding == "discount factor" else f"{source.compounding} rate"
         raise DataError(
-            f"{source.file}: row {row['row']}: a {source.compounding} rate of {row['value']:g} {source.unit} leaves no "
-            "growth factor above zero; check unit and compounding"
+            f"{source.file}: row {row['row']}: a {what} of {row['value']:g} {source.unit} leaves no growth factor "
+            "above zero; check unit and compounding"
         )
     return found
 
@@ -173,15 +184,18 @@ def _accruals(table: Table, key: str, tenors: Sequence[Tenor], of_row: np.typing
 
 
 def spot_quotes(tables: Sequence[Table], calendar: Calendar, home: str) -> Quotes:
-    """Spot rates of every declared direction as log home prices of foreign currency."""
+    """Spot rates of every declared direction as log home prices of foreign currency; home in itself is left out."""
     found: dict[str, Floats] = {}
     crosses: dict[str, Floats] = {}
     for table in tables:
         panel = levels((table,), calendar, _quote_key(table))
         for at, code in enumerate(panel.codes):
-            currency, sign = _direction(table.source, code, home)
-            into, name = (found, currency) if currency else (crosses, code)
-            into[name] = _joined(table.source, into.get(name), sign * np.log(panel.values[:, at]), name)
+            log_price, (base, quote) = np.log(panel.values[:, at]), _pair(table.source, code, home)
+            if base != quote and home in (base, quote):
+                currency, sign = _foreign(base, quote, home)
+                found[currency] = _joined(table.source, found.get(currency), sign * log_price, currency)
+            elif base != quote:
+                crosses[code] = _joined(table.source, crosses.get(code), log_price, code)
     if not found:
         raise DataError(f"{tables[0].source.file}: no pair with the home currency {home!r}; check home and the pairs")
     return Quotes(_panel(found, len(calendar)), _panel(crosses, len(calendar)))
@@ -209,14 +223,16 @@ def split_pair(source: Source, pair: str) -> tuple[str, str]:
     return parts[0], parts[1]
 
 
-def _direction(source: Source, code: str, home: str) -> tuple[str, float]:
-    """Foreign currency of a quote and the sign that makes its log a home price; no currency for a cross."""
+def _pair(source: Source, code: str, home: str) -> tuple[str, str]:
+    """Base and quote currency of one series."""
     if source.quote == "pair":
-        base, quote = split_pair(source, code)
-        if home not in (base, quote):
-            return "", 1.0
-        return (base, 1.0) if quote == home else (quote, -1.0)
-    return code, 1.0 if source.quote == "home per foreign" else -1.0
+        return split_pair(source, code)
+    return (code, home) if source.quote == "home per foreign" else (home, code)
+
+
+def _foreign(base: str, quote: str, home: str) -> tuple[str, float]:
+    """Foreign currency of a pair with home, and the sign that makes its log a home price."""
+    return (base, 1.0) if quote == home else (quote, -1.0)
 
 
 def forward_quotes(tables: Sequence[Table], spot: Sequence[Table], calendar: Calendar, home: str) -> Curves:
@@ -245,7 +261,8 @@ def _raw_curves(table: Table, calendar: Calendar, key: str) -> Curves:
     values = np.full((len(calendar), len(codes), len(names)), np.nan)
     frame = table.frame
     rows = calendar.locate(frame["ordinal"].to_numpy())
-    middle = (frame["bid"] + frame["ask"]).to_numpy() / 2 if table.source.quote == "points" and "bid" in frame else _mid(frame)
+    points = table.source.quote == "points" and "bid" in frame.columns
+    middle = (frame["bid"] + frame["ask"]).to_numpy() / 2 if points else _mid(frame)
     _put(table, values, (rows, _places(frame, key, codes), _places(frame, "tenor", names)), middle)
     return Curves(tuple(codes), tuple(parse_tenor(name) for name in names), values)
 
@@ -260,15 +277,33 @@ def _outright(
     """Log home price and currency of one forward series; no currency for a cross."""
     code, home = codes
     if source.quote != "points":
-        currency, sign = _direction(source, code, home)
-        return sign * np.log(raw), currency
+        base, quote = _pair(source, code, home)
+        price = raw
+    else:
+        (base, quote), price = _on_spot(source, spot, codes, raw)
+    if home not in (base, quote) or base == quote:
+        return raw, ""
+    currency, sign = _foreign(base, quote, home)
+    return sign * np.log(price), currency
+
+
+def _on_spot(
+    source: Source, spot: Sequence[tuple[Source, Panel]], codes: tuple[str, str], points: Floats
+) -> tuple[tuple[str, str], Floats]:
+    """The pair of a series of points, and the outright price: the middle of spot plus points over scale."""
+    code, home = codes
     (scale,) = by_code(source.scale, [_scaled_code(source, code, home)], source, "scale")
     for declared, panel in spot:
-        name = _same_quote(code, panel.codes, home, declared.quote == "pair")
-        if name:
-            currency, sign = _direction(declared, name, home)
-            outright = panel.column(name) + raw / float(scale)  # type: ignore[arg-type]
-            return sign * np.log(np.where(outright > 0, outright, np.nan)), currency
+        for name in panel.codes:
+            pair = _pair(declared, name, home)
+            if set(pair) == {code, home} if len(code) == 3 else pair == split_pair(source, code):
+                price = panel.column(name) + points / float(scale)  # type: ignore[arg-type]
+                if (price <= 0).any():
+                    raise DataError(
+                        f"{source.file}: {code}: points of {points[price <= 0][0]:g} with scale {scale} leave no "
+                        "forward price above zero; check scale and the direction of the points"
+                    )
+                return pair, price
     raise DataError(
         f"{source.file}: points for {code!r} have no spot rate to stand on; give its spot in the same direction"
     )
@@ -280,11 +315,3 @@ def _scaled_code(source: Source, code: str, home: str) -> str:
         return code
     base, quote = split_pair(source, code)
     return base if quote == home else quote
-
-
-def _same_quote(code: str, names: Sequence[str], home: str, pairs: bool) -> str:
-    if code in names:
-        return code
-    if pairs and len(code) == 3:
-        return next((name for name in names if {code, home} == {name[:3], name[-3:]}), "")
-    return ""

@@ -79,8 +79,9 @@ def test_a_two_way_quote_and_the_tenor_of_the_whole_file(put: Put) -> None:
     table = read(source)
     assert table.keys == ("pair", "tenor")
     assert cells(table, "pair", "tenor", "bid", "ask")[0] == ("QNKQMT", "3m", 1.1, 1.2)
-    assert table.frame["bid"].isna().tolist() == [False, True]
-    assert table.ledger["used"].tolist() == [2]
+    # One side alone has no middle, so it is a hole.
+    assert table.ledger["missing"].tolist() == [1]
+    assert table.ledger["used"].tolist() == [1]
 
 
 @pytest.mark.parametrize(
@@ -165,9 +166,10 @@ def test_repeated_rows_are_dropped_and_counted(put: Put) -> None:
     assert table.ledger["duplicates"].tolist() == [2, 0]
 
 
-def test_repeated_two_way_quotes_with_a_hole_are_the_same(put: Put) -> None:
-    table = read(put("date,pair,bid,ask\n2024-01,QNKQMT,,1\n2024-01,QNKQMT,,1\n"))
+def test_repeated_two_way_quotes_are_the_same_and_one_side_alone_is_a_hole(put: Put) -> None:
+    table = read(put("date,pair,bid,ask\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,,2\n"))
     assert table.ledger["duplicates"].tolist() == [1]
+    assert table.ledger["missing"].tolist() == [1]
 
 
 @pytest.mark.parametrize(
