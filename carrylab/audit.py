@@ -88,7 +88,8 @@ class Audit:
         split = (text.partition(": ") for text in self.not_compared)
         reasons = Counter(rest if name in names else f"{name}{colon}{rest}" for name, colon, rest in split)
         return compared + [
-            f"not compared: {reason}" + (f" ({count} samples)" if count > 1 else "") for reason, count in reasons.items()
+            f"not compared: {reason}" + (f" ({count} samples)" if count > 1 else "")
+            for reason, count in reasons.items()
         ]
 
 

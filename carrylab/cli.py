@@ -5,15 +5,12 @@ from __future__ import annotations
 import sys
 from collections.abc import Callable
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import click
 
 from carrylab import __version__
 from carrylab.errors import CarrylabError
-
-if TYPE_CHECKING:
-    from carrylab.results import Results
 
 STUDY = click.argument("study", type=click.Path(path_type=Path))
 
@@ -22,6 +19,7 @@ class Commands(click.Group):
     """A group that turns an expected error into its one line and a stop into exit code 130."""
 
     def invoke(self, ctx: click.Context) -> Any:
+        """Run the command."""
         try:
             return super().invoke(ctx)
         except CarrylabError as wrong:

@@ -79,7 +79,7 @@ def _panel_of(parity: Parity) -> pd.DataFrame:
     labels = np.array([parity.calendar.label(row) for row in range(len(parity.calendar))])
     names = np.array([entity.name for entity in parity.entities])
     place = {"market": parity.market, "parity": parity.name, "horizon": str(parity.horizon)}
-    frame = pd.DataFrame({name: pd.Categorical.from_codes(np.zeros(len(t), dtype=np.int8), [text]) for name, text in place.items()})
+    frame = pd.DataFrame({name: pd.Categorical([text]).repeat(len(t)) for name, text in place.items()})
     frame["date"], frame["entity"], frame["signal"] = labels[t], names[i], parity.signal[t, i]
     for leg in parity.legs:
         frame[leg.name] = leg.values[t, i]

@@ -11,7 +11,7 @@ import numpy as np
 from carrylab.audit import Audit
 from carrylab.audit import audit as audit_samples
 from carrylab.data.asof import as_of
-from carrylab.data.calendar import parse_tenor
+from carrylab.data.calendar import Tenor, parse_tenor
 from carrylab.data.checks import Check, check_market
 from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
@@ -94,11 +94,12 @@ def run(study: Study, *, audit: bool = False, progress: Progress | None = None) 
 def build(market: Market, economies: Mapping[str, str]) -> Built:
     """Read one market, build its parities and run all its checks."""
     data = read_market(market)
-    checks = check_market(data, economies)
+    checks = check_market(data)
     if any(one.level == "error" for one in checks):
         return Built(market, data, (), tuple(checks))
     parities = tuple(_kept(parity, market) for parity in MARKETS[market.kind](data, economies))
-    proofs = [identity_check(parity) for parity in parities]
+    main = next(iter(market.sources.values()))[0].file
+    proofs = [identity_check(parity, main) for parity in parities]
     return Built(market, data, parities, (*checks, *proofs))
 
 
@@ -248,19 +249,21 @@ def _accounts(built: Built) -> list[Row]:
 
 def _across(fits: list[Fit]) -> list[Row]:
     """Compare markets on carry, and on each market's own spread, where horizon and interval are the same."""
+    pooled = [one for one in fits if one.group == "pooled" and one.has_identity and one.leg_of("return") is not None]
+    own = {one.parity.market: one.parity.name for one in reversed(pooled)}
+    chosen = {
+        "carry": [one for one in pooled if one.parity.name == "carry"],
+        "each market's own spread": [one for one in pooled if one.parity.name == own[one.parity.market]],
+    }
     rows: list[Row] = []
-    pooled = [fit for fit in fits if fit.group == "pooled" and fit.has_identity and fit.leg_of("return") is not None]
-    own = {fit.parity.market: fit.parity.name for fit in reversed(pooled)}
-    for what, chosen in (
-        ("carry", [fit for fit in pooled if fit.parity.name == "carry"]),
-        ("each market's own spread", [fit for fit in pooled if fit.parity.name == own[fit.parity.market]]),
-    ):
-        for horizon, interval in dict.fromkeys(
-            (fit.parity.horizon, fit.parity.calendar.interval) for fit in chosen
-        ):
-            same = [f for f in chosen if (f.parity.horizon, f.parity.calendar.interval) == (horizon, interval)]
-            rows += across_rows(same, what)
+    for what, candidates in chosen.items():
+        for place in dict.fromkeys(_horizon_and_interval(one) for one in candidates):
+            rows += across_rows([one for one in candidates if _horizon_and_interval(one) == place], what)
     return rows
+
+
+def _horizon_and_interval(one: Fit) -> tuple[Tenor, str]:
+    return one.parity.horizon, one.parity.calendar.interval
 
 
 def _audited(built: list[Built], fitted: list[Fitted], say: Progress) -> Audit:

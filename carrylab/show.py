@@ -16,13 +16,10 @@ from carrylab.options import Market, Study
 from carrylab.runner import Built, build
 from carrylab.schema import nearest
 
-
 Thing = TypeVar("Thing", Market, Parity)
 
 
-def show_row(
-    study: Study, *, market: str | None, parity: str | None, entity: str | None, date: str | None
-) -> str:
+def show_row(study: Study, *, market: str | None, parity: str | None, entity: str | None, date: str | None) -> str:
     """The text of one worked row; what is not named is the first market, its first parity and its last whole row.
 
     Raises StudyError where a name or a date is not among those of the study.
@@ -94,7 +91,7 @@ def _lines(built: Built, parity: Parity, t: int, i: int) -> list[str]:
         total = sum(leg.weight * float(leg.values[t, i]) for leg in parity.legs if leg.weight is not None)
         lines.append(f"  {'sum of weight x leg':<46}{'':>10}{total:>14.8f}")
         lines.append(f"  {'signal less sum':<46}{'':>10}{float(parity.signal[t, i]) - total:>14.1e}")
-    return lines + ["", *(f"Note: {note}." for note in parity.notes)]
+    return [*lines, "", *(f"Note: {note}." for note in parity.notes)]
 
 
 def _tenors(parity: Parity, entity: Entity) -> set[str]:
@@ -105,9 +102,7 @@ def _tenors(parity: Parity, entity: Entity) -> set[str]:
     return wanted
 
 
-def _cells(
-    table: Table, entity: Entity, tenors: set[str], data: MarketData, rows: tuple[int, int]
-) -> list[str]:
+def _cells(table: Table, entity: Entity, tenors: set[str], data: MarketData, rows: tuple[int, int]) -> list[str]:
     frame = table.frame
     keep = frame["ordinal"].isin([int(data.calendar.ordinals[row]) for row in rows])
     for key in table.keys:

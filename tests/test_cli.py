@@ -190,7 +190,11 @@ def test_a_maturity_that_is_not_there(tmp_path: Path) -> None:
 COLUMNS = [
     ("a constant signal", lambda f: f.assign(spread=1.0, rx=1.0, dy=0.0), "does not vary"),
     ("a leg that is all missing", lambda f: f.assign(rx=""), "'excess return' has no value at all"),
-    ("no date in common", lambda f: f.assign(rx=f["rx"].where(f.index < 60), dy=f["dy"].where(f.index >= 60)), "no row"),
+    (
+        "no date in common",
+        lambda f: f.assign(rx=f["rx"].where(f.index < 60), dy=f["dy"].where(f.index >= 60)),
+        "no row",
+    ),
     ("a group of one", lambda f: f[(f["country"] != "EC") | (f["date"] == "2003-01-31")], "entity EC"),
 ]
 

@@ -42,7 +42,9 @@ def imports_of(path: Path) -> set[str]:
             inside = node.module.removeprefix("carrylab").lstrip(".")
             found |= {inside} if inside else {alias.name for alias in node.names}
         if isinstance(node, ast.Import):
-            found |= {alias.name.removeprefix("carrylab.") for alias in node.names if alias.name.startswith("carrylab.")}
+            found |= {
+                alias.name.removeprefix("carrylab.") for alias in node.names if alias.name.startswith("carrylab.")
+            }
     return found
 
 
@@ -63,10 +65,10 @@ def test_a_module_imports_only_what_lies_before_it(path: Path) -> None:
 @pytest.mark.parametrize("path", sorted((PACKAGE / "regression").glob("*.py")), ids=lambda path: path.name)
 def test_the_routines_use_numpy_and_scipy_only(path: Path) -> None:
     tree = ast.parse(path.read_text(encoding="utf-8"))
-    roots = {alias.name.split(".")[0] for node in ast.walk(tree) if isinstance(node, ast.Import) for alias in node.names}
-    roots |= {
-        node.module.split(".")[0] for node in ast.walk(tree) if isinstance(node, ast.ImportFrom) and node.module
+    roots = {
+        alias.name.split(".")[0] for node in ast.walk(tree) if isinstance(node, ast.Import) for alias in node.names
     }
+    roots |= {node.module.split(".")[0] for node in ast.walk(tree) if isinstance(node, ast.ImportFrom) and node.module}
     assert roots <= {
         "__future__",
         "carrylab",

@@ -20,12 +20,16 @@ Flags = npt.NDArray[np.bool_]
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Span:
-    """The interval, the first and last day allowed (None: no bound), and whether every date of a period is kept."""
+    """The interval, the first and last day allowed (None: no bound), and whether an added predictor is read."""
 
     interval: Interval
     first: np.datetime64 | None
     last: np.datetime64 | None
-    every_date: bool = False
+    control: bool = False
+
+    def keeps_every_date(self, source: Source) -> bool:
+        """Whether a date counts by when it was known rather than by its period."""
+        return self.control and source.known_after is not None
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -59,7 +63,8 @@ def account(
 
     frame = without(frame, "missing", _missing(frame, names))
     frame = without(frame, "outside", _outside(frame, span))
-    _require_above_zero(source, frame, labels, names)
+    if source.role in ABOVE_ZERO and source.quote != "points" and not span.control:
+        _require_above_zero(source, frame, labels, names)
     frame = frame.iloc[np.lexsort((frame["row"], frame["date"], frame["series"]))]
     frame = without(frame, "duplicates", _repeated(source, frame, labels, names))
     frame = without(frame, "superseded", _superseded(source, frame, labels, span))
@@ -95,8 +100,6 @@ def _outside(frame: pd.DataFrame, span: Span) -> Flags:
 
 
 def _require_above_zero(source: Source, frame: pd.DataFrame, labels: Sequence[str], names: Sequence[str]) -> None:
-    if source.role not in ABOVE_ZERO or source.quote == "points":
-        return
     for name in names:
         low = (frame[name] <= 0).to_numpy()
         if low.any():
@@ -126,7 +129,7 @@ def _repeated(source: Source, frame: pd.DataFrame, labels: Sequence[str], names:
 
 def _superseded(source: Source, frame: pd.DataFrame, labels: Sequence[str], span: Span) -> Flags:
     """All but the last date of each period."""
-    if span.every_date:
+    if span.keeps_every_date(source):
         return np.zeros(len(frame), dtype=bool)
     second = _as_before(frame, "ordinal")
     if second.any() and source.timing == "average":

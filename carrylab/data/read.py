@@ -86,15 +86,12 @@ def _span(interval: Interval, first: str | None, last: str | None) -> Span:
 
 
 def _control(source: Source, span: Span) -> Table:
-    if source.known_after is not None:
-        span = replace(span, first=None, every_date=True)
-    table = _table(source, span, None)
+    table = _table(source, replace(span, first=span.first if source.known_after is None else None, control=True), None)
     wrong = [key for key in table.keys if key not in CONTROL_KEYS]
-    if wrong or "value" not in table.frame.columns:
-        seen = f"is given by {wrong[0]}" if wrong else "has bid and ask"
+    if wrong:
         raise DataError(
-            f"{source.file}: {source.role!r} {seen}; allowed for an added predictor is one value by date, or also by "
-            f"{', '.join(CONTROL_KEYS)}"
+            f"{source.file}: {source.role!r} is given by {wrong[0]}; allowed for an added predictor is by date alone, or "
+            f"also by {', '.join(CONTROL_KEYS)}"
         )
     return table
 
@@ -102,7 +99,7 @@ def _control(source: Source, span: Span) -> Table:
 def _table(source: Source, span: Span, panel: PanelColumns | None) -> Table:
     cells = read_cells(source)
     layout = find_layout(source, list(cells.columns), panel)
-    days, numbers = read_dates(source, cells[layout.date], span.interval, coarse=span.every_date)
+    days, numbers = read_dates(source, cells[layout.date], span.interval, coarse=span.keeps_every_date(source))
     frame, keys = long_rows(source, cells, layout)
     repeat = len(frame) // len(cells)
     frame.insert(2, "date", np.repeat(days.astype("datetime64[s]"), repeat))

@@ -119,14 +119,15 @@ def _refuse_twice(source: Source, keys: Mapping[str, str], wide: Mapping[str, Ma
 
 
 def _values(source: Source, rest: Mapping[str, str]) -> dict[str, str]:
-    if "bid" in rest and "ask" in rest:
+    if source.quote is not None and "bid" in rest and "ask" in rest:
         return {"bid": rest["bid"], "ask": rest["ask"]}
     if "value" in rest:
         return {"value": rest["value"]}
     if len(rest) == 1:
         return {"value": next(iter(rest.values()))}
+    two_way = "" if source.quote is None else ", nor 'bid' and 'ask'"
     raise DataError(
-        f"{source.file}: no column 'value', nor 'bid' and 'ask'; found beside date and keys: {shown(rest) or 'none'}; "
+        f"{source.file}: no column 'value'{two_way}; found beside date and keys: {shown(rest) or 'none'}; "
         'map it with columns = { name_in_file = "value" }, or name the key that runs along the columns with spread'
     )
 

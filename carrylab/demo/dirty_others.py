@@ -126,12 +126,16 @@ def _equity_cases(world: World) -> list[Case]:
         _equity(
             "Dividends in hundredths",
             {"prices": ("price.csv", price), "dividends": ("dividend_unit.csv", hundredths)},
-            Plant("Q1", "warning", "dividend_unit.csv", "QX", *ALWAYS, "dividends in hundredths of the price's unit"),
+            Plant(
+                "Q1", "warning", "dividend_unit.csv", "QX", *ALWAYS, "dividends in hundredths of the price's unit", "I1"
+            ),
         ),
         _equity(
             "Total return a month late",
             {"prices": ("price.csv", price), "total_return": ("total_return_late.csv", lagged(back, "QT"))},
-            Plant("Q1", "warning", "total_return_late.csv", "QT", *ALWAYS, "total return stands one month late", "D4"),
+            Plant(
+                "Q1", "warning", "total_return_late.csv", "QT", *ALWAYS, "total return stands one month late", "D4 I1"
+            ),
         ),
         _equity(
             "Price and total return swapped",

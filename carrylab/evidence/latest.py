@@ -7,7 +7,7 @@ import numpy as np
 from carrylab.evidence.setting import Fit, Row, tested
 from carrylab.regression.fitted import fitted
 from carrylab.regression.longrun import longrun
-from carrylab.regression.sample import Floats
+from carrylab.regression.sample import Floats, Ints
 
 
 def latest_rows(fit: Fit, terms: Floats) -> list[Row]:
@@ -44,11 +44,12 @@ def latest_rows(fit: Fit, terms: Floats) -> list[Row]:
     return rows
 
 
-def _newest(terms: Floats) -> np.typing.NDArray[np.int64]:
+def _newest(terms: Floats) -> Ints:
     """Row of the newest whole set of terms of each entity, -1 where there is none."""
     stands = np.isfinite(terms).all(axis=2)
     rows = np.arange(len(terms))[:, None]
-    return np.where(stands, rows, -1).max(axis=0).astype(np.int64)
+    newest: Ints = np.where(stands, rows, -1).max(axis=0)
+    return newest
 
 
 def _percentile(signal: Floats, row: int) -> float:

@@ -28,7 +28,8 @@ def summary_rows(fit: Fit, said: Sequence[str] = ()) -> list[Row]:
         rows += _worth(fit, at, bias)
         warnings += _warnings(bias)
     return [place | {"section": "summary"} | row for row in rows] + [
-        place | {"section": "warning", "term": f"warning {number}", "note": text} for number, text in enumerate(warnings, 1)
+        place | {"section": "warning", "term": f"warning {number}", "note": text}
+        for number, text in enumerate(warnings, 1)
     ]
 
 

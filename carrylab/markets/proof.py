@@ -8,26 +8,30 @@ from carrylab.data.checks import Check
 from carrylab.markets.parity import Parity, identity
 
 
-def identity_check(parity: Parity) -> Check:
-    """Error where the identity or its stated approximation fails, else a note with the largest gap."""
-    series = f"{parity.name}, {parity.horizon}"
+def identity_check(parity: Parity, file: str) -> Check:
+    """Error where the identity or its stated approximation fails, else a note with the largest gap.
+
+    `file` is the market's main data file, for the printed line.
+    """
     proof = identity(parity)
+    what = f"{parity.name}, {parity.horizon}"
     if proof is None:
-        return Check(
-            "I1", "note", "", f"{parity.market}: {series}", "", "", "legs without weights", "no identity is claimed"
-        )
-    where = (proof.date, proof.date)
+        return Check("I1", "note", file, "", "", "", f"{what}: legs without weights", "no identity is claimed")
+    entity, date = proof.entity, proof.date
     if proof.gap > parity.tolerance:
-        seen = f"|signal - sum of weight x leg| is {proof.gap:.3g} at {proof.entity}, above {parity.tolerance:g}"
+        seen = f"{what}: |signal - sum of weight x leg| is {proof.gap:.3g}, above {parity.tolerance:g}"
         advice = "check the legs' weights, units and dates, or set tolerance"
-        return Check("I1", "error", "", f"{parity.market}: {series}", *where, seen, advice)
+        return Check("I1", "error", file, entity, date, date, seen, advice)
     size = _approximation(parity)
     if parity.approximation_bound is not None and size > parity.approximation_bound:
-        seen = f"the log-linear approximation is off by up to {size:.3g}, above {parity.approximation_bound:.3g}"
+        seen = (
+            f"{what}: the log-linear approximation is off by up to {size:.3g}, above {parity.approximation_bound:.3g}"
+        )
         advice = "check dividends against prices, or set a wider tolerance for a volatile ratio"
-        return Check("I1", "error", "", f"{parity.market}: {series}", "", "", seen, advice)
-    seen = f"largest gap {proof.gap:.1e} over {proof.rows} rows" + (f", approximation up to {size:.3f}" if size else "")
-    return Check("I1", "note", "", f"{parity.market}: {series}", *where, seen, "nothing to do")
+        return Check("I1", "error", file, "", "", "", seen, advice)
+    seen = f"{what}: largest gap {proof.gap:.1e} over {proof.rows} rows"
+    seen += f", approximation up to {size:.3f}" if size else ""
+    return Check("I1", "note", file, entity, date, date, seen, "nothing to do")
 
 
 def _approximation(parity: Parity) -> float:

@@ -104,32 +104,32 @@ def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str)
     rows = findings[keep & (findings["parity"] == parity) & (findings["horizon"] == horizon)]
     if rows.empty:
         return None
-    lines = []
-    for entity, own in rows.groupby("group", sort=False):
-        at = own.set_index("term")
-        premium = at.loc["fitted premium"]
-        lines.append(
-            Line(
-                str(entity),
-                (
-                    word_cell(str(premium["last"])),
-                    percent_cell(at.at["signal", "estimate"]),
-                    percent_cell(at.at["percentile", "estimate"], 0),
-                    percent_cell(premium["estimate"]),
-                    interval_cell(premium["lower"] * 100, premium["upper"] * 100),
-                ),
-            )
-        )
+    by_entity: dict[str, dict[str, Record]] = {}
+    for record in rows.to_dict("records"):
+        by_entity.setdefault(str(record["group"]), {})[str(record["term"])] = record
+    lines = [_latest_line(entity, terms) for entity, terms in by_entity.items()]
     return Table(
         title=f"{market}: newest signal and fitted premium, {parity}, {horizon}",
         head=("at", "signal, %", "percentile", "premium, %", "interval"),
         lines=tuple(lines),
         notes=(
-            "Premium over the horizon from the pooled fit, in sample; the interval is for the expected premium, not for "
-            "the return, which varies far more. Percentile within the entity's own history.",
+            "Premium over the horizon from the pooled fit, in sample; the interval is for the expected premium, not "
+            "for the return, which varies far more. Percentile within the entity's own history.",
         ),
         corner="entity",
     )
+
+
+def _latest_line(entity: str, terms: dict[str, Record]) -> Line:
+    premium = terms["fitted premium"]
+    cells = (
+        word_cell(str(premium["last"])),
+        percent_cell(terms["signal"]["estimate"]),
+        percent_cell(terms["percentile"]["estimate"], 0),
+        percent_cell(premium["estimate"]),
+        interval_cell(premium["lower"] * 100, premium["upper"] * 100),
+    )
+    return Line(entity, cells)
 
 
 def ledger_table(findings: pd.DataFrame) -> Table | None:
@@ -155,8 +155,8 @@ def identity_lines(findings: pd.DataFrame) -> list[str]:
     """One line a parity: the largest gap of its identity, and the rules used."""
     rows = findings[findings["section"] == "identity"]
     return [
-        f"{row['market']}, {row['parity']}, {row['horizon']}: largest gap {row['estimate']:.1e} over {row['n_obs']:,.0f} "
-        f"rows; {row['note']}"
+        f"{row['market']}, {row['parity']}, {row['horizon']}: largest gap {row['estimate']:.1e} over "
+        f"{row['n_obs']:,.0f} rows; {row['note']}"
         for row in rows.to_dict("records")
     ]
 

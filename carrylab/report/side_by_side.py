@@ -183,7 +183,11 @@ def _levels(columns: list[Column]) -> list[Line]:
         value = summary("mean signal")(column)
         return number_cell(value) if _is_ratio(column) else percent_cell(value)
 
-    mean, error, level = summary("mean excess return"), summary("mean excess return", "std_error"), summary("level share")
+    mean, error, level = (
+        summary("mean excess return"),
+        summary("mean excess return", "std_error"),
+        summary("level share"),
+    )
     return [
         Line("Levels over the horizon, %", heading=True),
         _line("mean signal", columns, mean_signal),

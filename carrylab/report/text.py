@@ -16,8 +16,8 @@ HEAD_WIDTH = 12
 GAP = 2
 CAUTIONS = (
     "Not investment advice. Everything here is in sample, and a premium in sample is no forecast.",
-    "Before costs, margin, tax and capital controls. Carry earns little by little and loses in crashes; a peg that held "
-    "says nothing about the day it breaks.",
+    "Before costs, margin, tax and capital controls. Carry earns little by little and loses in crashes; a peg that "
+    "held says nothing about the day it breaks.",
     "Horizons, markets and countries are not independent evidence. Local rules may ask for licensed advice.",
 )
 
@@ -51,7 +51,12 @@ def _section(title: str, lines: Iterable[str], width: int) -> list[str]:
 
 def _wrapped(text: str, width: int, indent: str) -> str:
     return textwrap.fill(
-        text, width, initial_indent=indent, subsequent_indent=indent + "  ", break_long_words=False, break_on_hyphens=False
+        text,
+        width,
+        initial_indent=indent,
+        subsequent_indent=indent + "  ",
+        break_long_words=False,
+        break_on_hyphens=False,
     )
 
 
@@ -103,4 +108,3 @@ def _block(table: Table) -> str:
 
 def _label(line: Line) -> str:
     return line.label if line.heading else f"  {line.label}" if line.label else ""
-

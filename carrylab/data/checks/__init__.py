@@ -2,36 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass
-from typing import Literal
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from types import MappingProxyType
 
+from carrylab.data.checks.currencies import CURRENCIES
+from carrylab.data.checks.equities import EQUITIES
+from carrylab.data.checks.finding import Check, Dense, dense_tables
+from carrylab.data.checks.rates import RATES
+from carrylab.data.checks.series import SERIES
 from carrylab.data.read import MarketData
 
+__all__ = ["REGISTRY", "Check", "check_market"]
 
-@dataclass(frozen=True, slots=True)
-class Check:
-    """One finding of a load check; `first` and `last` are period names or empty."""
-
-    id: str
-    level: Literal["error", "warning", "note"]
-    file: str
-    series: str
-    first: str
-    last: str
-    seen: str
-    advice: str
-
-    def line(self) -> str:
-        """The one printed line."""
-        dates = self.first if self.first == self.last else f"{self.first} to {self.last}"
-        place = " ".join(part for part in (self.file, self.series, dates) if part)
-        return f"{self.level} {self.id} {place}: {self.seen}; {self.advice}"
+REGISTRY: Mapping[str, Callable[[MarketData, Sequence[Dense]], Iterable[Check]]] = MappingProxyType(
+    {**RATES, **CURRENCIES, **SERIES, **EQUITIES}
+)
 
 
-REGISTRY: Mapping[str, Callable[[MarketData, Mapping[str, str]], list[Check]]] = {}
-
-
-def check_market(data: MarketData, economies: Mapping[str, str]) -> list[Check]:
-    """Every finding of every load check on one market."""
-    return [found for check in REGISTRY.values() for found in check(data, economies)]
+def check_market(data: MarketData) -> list[Check]:
+    """Every finding of every load check on one market, errors first."""
+    tables = dense_tables(data)
+    found = [one for check in REGISTRY.values() for one in check(data, tables)]
+    return sorted(found, key=lambda one: ("error", "warning", "note").index(one.level))
