@@ -85,8 +85,8 @@ def _series(frame: pd.DataFrame, keys: tuple[str, ...]) -> tuple[Ints, list[str]
 def _missing(frame: pd.DataFrame, names: Sequence[str]) -> Flags:
     """Rows without any value; a two-way quote needs both sides, as one side alone has no middle."""
     holes: Flags = np.isnan(frame[list(names)].to_numpy())
-    gone: Flags = holes.any(axis=1) if list(names) == ["bid", "ask"] else holes.all(axis=1)
-    return gone
+    enough = np.any if list(names) == ["bid", "ask"] else np.all
+    return np.asarray(enough(holes, axis=1))
 
 
 def _outside(frame: pd.DataFrame, span: Span) -> Flags:

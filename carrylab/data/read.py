@@ -90,8 +90,8 @@ def _control(source: Source, span: Span) -> Table:
     wrong = [key for key in table.keys if key not in CONTROL_KEYS]
     if wrong:
         raise DataError(
-            f"{source.file}: {source.role!r} is given by {wrong[0]}; allowed for an added predictor is by date alone, or "
-            f"also by {', '.join(CONTROL_KEYS)}"
+            f"{source.file}: {source.role!r} is given by {wrong[0]}; allowed for an added predictor is by date alone, "
+            f"or also by {', '.join(CONTROL_KEYS)}"
         )
     return table
 

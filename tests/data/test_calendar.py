@@ -73,6 +73,12 @@ def test_lengths_are_compared_and_moved_by_what_they_last() -> None:
     assert str(parse_tenor("3w") - parse_tenor("1w")) == "2w"
 
 
+def test_lengths_are_ordered_by_what_they_last() -> None:
+    texts = ["1y", "400d", "1m", "30d", "2w", "13m"]
+    assert [str(tenor) for tenor in sorted(map(parse_tenor, texts))] == ["2w", "30d", "1m", "1y", "13m", "400d"]
+    assert parse_tenor("12m") <= parse_tenor("1y")
+
+
 def test_a_month_is_a_twelfth_and_a_day_a_365th_of_a_year() -> None:
     assert parse_tenor("1m").years == 1 / 12
     assert parse_tenor("30d").years == 30 / 365

@@ -167,7 +167,8 @@ def test_repeated_rows_are_dropped_and_counted(put: Put) -> None:
 
 
 def test_repeated_two_way_quotes_are_the_same_and_one_side_alone_is_a_hole(put: Put) -> None:
-    table = read(put("date,pair,bid,ask\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,,2\n"))
+    source = put("date,pair,bid,ask\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,,2\n", role="spot")
+    table = read(replace(source, quote="pair"))
     assert table.ledger["duplicates"].tolist() == [1]
     assert table.ledger["missing"].tolist() == [1]
 

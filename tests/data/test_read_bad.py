@@ -82,7 +82,7 @@ CELLS: dict[str, tuple[str, dict[str, object], str]] = {
     ),
     "two asks on one date": (
         "date,pair,bid,ask\n2024-01,QNKQMT,1,2\n2024-01,QNKQMT,1,3\n",
-        {},
+        {"role": "spot", "quote": "pair"},
         "rows 2 and 3 give QNKQMT on 2024-01-31 two values, ask 2 and 3; allowed is one; keep one of the rows",
     ),
     "two averages in one month": (
@@ -171,13 +171,25 @@ CELLS: dict[str, tuple[str, dict[str, object], str]] = {
     "several columns that may be the value": (
         "date,economy,one,two\n2024-01,QM,1,2\n",
         {},
-        "no column 'value', nor 'bid' and 'ask'; found beside date and keys: one, two; map it with columns = "
+        "no column 'value'; found beside date and keys: one, two; map it with columns = "
+        '{ name_in_file = "value" }, or name the key that runs along the columns with spread',
+    ),
+    "a two-way rate": (
+        "date,currency,tenor,bid,ask\n2024-01,QNK,1m,1,2\n",
+        {"role": "deposits"},
+        "no column 'value'; found beside date and keys: bid, ask; map it with columns = { name_in_file = \"value\" }, "
+        "or name the key that runs along the columns with spread",
+    ),
+    "a spot rate with one side": (
+        "date,pair,bid,volume\n2024-01,QNKQMT,1,2\n",
+        {"role": "spot", "quote": "pair"},
+        "no column 'value', nor 'bid' and 'ask'; found beside date and keys: bid, volume; map it with columns = "
         '{ name_in_file = "value" }, or name the key that runs along the columns with spread',
     ),
     "no value at all": (
         "date,economy\n2024-01,QM\n",
         {},
-        "no column 'value', nor 'bid' and 'ask'; found beside date and keys: none; map it with columns = "
+        "no column 'value'; found beside date and keys: none; map it with columns = "
         '{ name_in_file = "value" }, or name the key that runs along the columns with spread',
     ),
     "a wide file without series": (

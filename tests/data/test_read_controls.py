@@ -91,17 +91,17 @@ def test_a_predictor_that_serves_no_entity_is_refused(put: Put) -> None:
     )
 
 
-@pytest.mark.parametrize(
-    ("header", "row", "seen"),
-    [("date,pair,value", "QNKQMT,1", "is given by pair"), ("date,economy,bid,ask", "QM,1,2", "has bid and ask")],
-)
-def test_what_a_predictor_may_be_given_by(put: Put, header: str, row: str, seen: str) -> None:
+def test_what_a_predictor_may_be_given_by(put: Put) -> None:
     with pytest.raises(DataError) as refused:
-        control(put(f"{header}\n2024-01,{row}\n", role="growth"))
+        control(put("date,pair,value\n2024-01,QNKQMT,1\n", role="growth"))
     assert str(refused.value) == (
-        f"data.csv: 'growth' {seen}; allowed for an added predictor is one value by date, or also by economy, "
+        "data.csv: 'growth' is given by pair; allowed for an added predictor is by date alone, or also by economy, "
         "currency, index, entity, maturity"
     )
+
+
+def test_a_predictor_called_like_a_price_may_be_negative(put: Put) -> None:
+    assert same(as_of(months(1), control(put("date,value\n2024-01,-1\n", role="spot")), ["a"])[0], -1)
 
 
 @given(
@@ -138,6 +138,12 @@ def test_a_panel_keeps_its_columns_and_the_rows_stand_at_their_origin(put: Put) 
     assert same(table.frame.iloc[0, 5:].to_numpy(dtype=float), 3, 4, 2, 1, 5)
     assert same(table.frame.iloc[1, 5:].to_numpy(dtype=float), 3, np.nan, 2, np.nan, np.nan)
     assert table.ledger["used"].tolist() == [1, 1]
+
+
+def test_rows_of_a_panel_with_the_same_holes_are_the_same(put: Put) -> None:
+    source = put("date,country,spread,rx,rx1,dy,growth\n" + "2024-01,QM,1,,,,5\n" * 2, role="panel")
+    table = read_panel(source, PANEL, interval="month", first=None, last=None)
+    assert table.ledger["duplicates"].tolist() == [1]
 
 
 def test_a_panel_without_entities_and_with_mapped_names(put: Put) -> None:
