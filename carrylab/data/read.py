@@ -97,6 +97,11 @@ def _control(source: Source, span: Span) -> Table:
 
 
 def _table(source: Source, span: Span, panel: PanelColumns | None) -> Table:
+    if source.known_after is not None and not span.control:
+        raise DataError(
+            f"{source.file}: known_after is declared for {source.role}; allowed is a lag for an added predictor, for a "
+            "spread and its outcomes stand at their own dates; date late values by the day they were known"
+        )
     cells = read_cells(source)
     layout = find_layout(source, list(cells.columns), panel)
     days, numbers = read_dates(source, cells[layout.date], span.interval, coarse=span.keeps_every_date(source))
