@@ -45,8 +45,7 @@ errors = "auto"
 spot = { file = "spot.csv", quote = "home per foreign" }
 forwards = { file = "forwards.csv", quote = "points", scale = { QNK = 100, others = 10000 } }
 deposits = [ { file = "a.csv", unit = "percent", compounding = "simple", day_count = "act/360", tenor = "1m" },
-             { file = "b.csv", unit = "percent", compounding = "simple",
-               day_count = { QNK = "act/365f", others = "act/360" } } ]
+  { file = "b.csv", unit = "percent", compounding = "simple", day_count = { QNK = "act/365f", others = "act/360" } } ]
 controls = [ { name = "growth gap", file = "growth.csv", known_after = "2m" } ]
 
 [[market]]

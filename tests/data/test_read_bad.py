@@ -114,8 +114,8 @@ CELLS: dict[str, tuple[str, dict[str, object], str]] = {
     "a publication lag of the spread itself": (
         LONG + "2024-01,QM,1m,1\n",
         {"known_after": parse_tenor("1m")},
-        "known_after is declared for zero_yields; allowed is a lag for an added predictor, for a spread and its outcomes "
-        "stand at their own dates; date late values by the day they were known",
+        "known_after is declared for zero_yields; allowed is a lag for an added predictor, for a spread and its "
+        "outcomes stand at their own dates; date late values by the day they were known",
     ),
     "a maturity of zero": (
         LONG + "2024-01,QM,0m,1\n",
