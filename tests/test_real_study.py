@@ -161,3 +161,16 @@ def test_the_ledger_counts_every_column_of_a_file(results) -> None:
     # Price, dividend and bill rate of 558 months stand in one file.
     line = next(line.split() for line in results.report(100).splitlines() if line.strip().startswith("equities.csv"))
     assert (line[1], line[2], line[-1]) == ("3", "1,674", "1,674")
+
+
+def test_the_load_checks_show_what_looks_wrong(results) -> None:
+    lines = [(one.level, one.file, one.series, one.first, one.seen) for one in results.checks["Currencies"]]
+    crisis = [seen for level, *place, seen in lines if level == "warning" and place[1:] == ["SEK 3m", "1992-Q3"]]
+    assert len(crisis) == 1
+    assert "stands alone, 75 MAD" in crisis[0]
+    # The pound's rates of another country end with a jump in 1978-Q2, 9 MAD, beside that of 1979-Q3.
+    (pound,) = [seen for _, file, series, _, seen in lines if (file, series) == ("deposit_rates.csv", "GBP 3m")]
+    assert pound.endswith("10 in 1979-Q3, 9 in 1978-Q2")
+    # The rand stood still against the dollar from 1975-Q4 to 1978-Q4.
+    assert ("warning", "fx_spot.csv", "ZAR", "1975-Q4", "price unchanged for 13 periods") in lines
+    assert not [line for found in results.checks.values() for line in found if line.level == "error"]

@@ -16,6 +16,7 @@ STALE = {"day": 5, "week": 4, "month": 3, "quarter": 3, "year": 3}  # unchanged 
 MISALIGNED_DAYS = 5  # between the usual observation days of two series
 AVERAGE_AUTOCORRELATION = 0.15  # Working (1960): changes of averages have .25
 EXTREME = 8.0  # median absolute deviations
+ALONE = 30.0  # median absolute deviations, out and back
 SHIFT_PERIODS = 6  # a splice moves the level for at least so long
 QUIET = 3.0  # median absolute deviations within which peers count as quiet
 TEN = math.log(10.0)
@@ -180,6 +181,7 @@ def _told_apart(
 ) -> Iterator[Check]:
     changes, sizes = moves
     rest: list[int] = []
+    last = -2
     for t in large:
         rows = slice(int(t), int(t) + 1)
         power = round(abs(changes[t, at]) / TEN)
@@ -193,12 +195,26 @@ def _told_apart(
                     f"one change of {changes[t, at]:+.0%} that lasts, {sizes[t, at]:.0f} times the usual, peers quiet"
                 )
                 yield one.found(("D6", "warning"), at, rows, (seen, "another source from here? splice by a ratio"))
-        elif not rest or t != rest[-1] + 1:
+        elif not one.is_price() and _stands_alone(changes[:, at], sizes[:, at], int(t)):
+            seen = f"one value stands alone, {sizes[t, at]:.0f} MAD from the one before and back again"
+            advice = "a slip, or a crisis? it can make a slope on its own; nothing is deleted"
+            yield one.found(("D8", "warning"), at, rows, (seen, advice))
+            last = t
+        elif t != last + 1:
             rest.append(int(t))
+            last = t
     if rest:
-        worst = max(rest, key=lambda t: sizes[t, at])
-        seen = f"{len(rest)} changes beyond {EXTREME:.0f} MAD, the largest shown is {sizes[worst, at]:.0f}"
-        yield one.found(("D8", "note"), at, slice(worst, worst + 1), (seen, "look at it; nothing is deleted"))
+        rest.sort(key=lambda t: -sizes[t, at])
+        largest = ", ".join(f"{sizes[t, at]:.0f} in {one.label(t)}" for t in rest[:3])
+        seen = f"{len(rest)} changes beyond {EXTREME:.0f} MAD, the largest {largest}"
+        yield one.found(("D8", "note"), at, slice(rest[0], rest[0] + 1), (seen, "look at it; nothing is deleted"))
+
+
+def _stands_alone(changes: Floats, sizes: Floats, t: int) -> bool:
+    """A change far beyond the extreme that the next one mostly takes back."""
+    if not sizes[t] > ALONE or t + 1 >= len(changes):
+        return False
+    return bool(-changes[t + 1] / changes[t] > 0.5)
 
 
 def _lasts(one: Dense, at: int, t: int, jump: float) -> bool:
