@@ -107,10 +107,12 @@ def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str)
     by_entity: dict[str, dict[str, Record]] = {}
     for record in rows.to_dict("records"):
         by_entity.setdefault(str(record["group"]), {})[str(record["term"])] = record
-    lines = [_latest_line(entity, terms) for entity, terms in by_entity.items()]
+    own_units = parity == "columns"
+    lines = [_latest_line(entity, terms, 1 if own_units else 100) for entity, terms in by_entity.items()]
+    unit = "" if own_units else ", %"
     return Table(
         title=f"{market}: newest signal and fitted premium, {parity}, {horizon}",
-        head=("at", "signal, %", "percentile", "premium, %", "interval"),
+        head=("at", f"signal{unit}", "percentile", f"premium{unit}", "interval"),
         lines=tuple(lines),
         notes=(
             "Premium over the horizon from the pooled fit, in sample; the interval is for the expected premium, not "
@@ -120,14 +122,14 @@ def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str)
     )
 
 
-def _latest_line(entity: str, terms: dict[str, Record]) -> Line:
+def _latest_line(entity: str, terms: dict[str, Record], scale: int) -> Line:
     premium = terms["fitted premium"]
     cells = (
         word_cell(str(premium["last"])),
-        percent_cell(terms["signal"]["estimate"]),
+        number_cell(terms["signal"]["estimate"] * scale),
         percent_cell(terms["percentile"]["estimate"], 0),
-        percent_cell(premium["estimate"]),
-        interval_cell(premium["lower"] * 100, premium["upper"] * 100),
+        number_cell(premium["estimate"] * scale),
+        interval_cell(premium["lower"] * scale, premium["upper"] * scale),
     )
     return Line(entity, cells)
 

@@ -28,8 +28,11 @@ ROLE_WORDS = {
     "carried over": "still in the price",
     "approximation": "approximation error",
 }
+STANDING = (
+    "Slopes speak of variation in the spread: entity effects absorb standing premia, which the levels show instead."
+)
 SIGNAL_WIDTH = 20
-HORIZON_MIX = "Horizons, intervals or samples differ between the columns, so no test across markets is given."
+HORIZON_MIX = "Horizons or intervals differ between the columns, so no test across markets is given."
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -86,11 +89,15 @@ def side_by_side(findings: pd.DataFrame, *, title: str = "", parity: str | None 
         return None
     lines = [*_head(columns), *_shares(columns), *_tests(columns), *_levels(columns), *_sample(columns)]
     return Table(
-        title=title,
+        title=f"{title}\n{HORIZON_MIX}" if _mixed(columns) else title,
         head=tuple(column.market for column in columns),
         lines=tuple(lines),
         notes=_notes(columns),
     )
+
+
+def _mixed(columns: list[Column]) -> bool:
+    return len({(column.horizon, column.rows.iloc[0]["interval"]) for column in columns}) > 1
 
 
 def _line(label: str, columns: list[Column], cell: Callable[[Column], Cell]) -> Line:
@@ -181,7 +188,7 @@ def _levels(columns: list[Column]) -> list[Line]:
 
     def mean_signal(column: Column) -> Cell:
         value = summary("mean signal")(column)
-        return number_cell(value) if _is_ratio(column) else percent_cell(value)
+        return number_cell(value) if _is_ratio(column) else _level(column, value)
 
     mean, error, level = (
         summary("mean excess return"),
@@ -189,12 +196,25 @@ def _levels(columns: list[Column]) -> list[Line]:
         summary("level share"),
     )
     return [
-        Line("Levels over the horizon, %", heading=True),
+        Line("Levels over the horizon", heading=True),
         _line("mean signal", columns, mean_signal),
-        _line("mean excess return", columns, lambda c: percent_cell(mean(c))),
-        _line("", columns, lambda c: error_cell(error(c) * 100)),
+        _line("mean excess return", columns, lambda c: _level(c, mean(c))),
+        _line("", columns, lambda c: error_cell(error(c) * (1 if c.parity == "columns" else 100))),
+        _line("constant", columns, lambda c: _level(c, _constant(c))),
+        _line("sd of the signal, effects out", columns, lambda c: _level(c, summary("signal sd within")(c))),
         _line("mean return / mean signal", columns, lambda c: Cell() if _is_ratio(c) else number_cell(level(c))),
     ]
+
+
+def _level(column: Column, value: float) -> Cell:
+    """A level in percent; a column of the user's own stays in its unit."""
+    return number_cell(value) if column.parity == "columns" else percent_cell(value)
+
+
+def _constant(column: Column) -> float:
+    """Constant of the return leg, NaN where there is none."""
+    found = column.find("const", role="return")
+    return float(found["estimate"].iloc[0]) if len(found) else math.nan
 
 
 def _is_ratio(column: Column) -> bool:
@@ -247,7 +267,6 @@ def _notes(columns: list[Column]) -> tuple[str, ...]:
     for column in columns:
         said.setdefault(_method(column), []).append(column.market)
     methods = [f"{', '.join(markets)}: {method}." for method, markets in said.items()]
-    mixed = len(columns) > 1 and len({(c.horizon, c.rows.iloc[0]["interval"]) for c in columns}) > 1
     warnings = [
         f"{column.market}: {text}."
         for column in columns
@@ -257,10 +276,10 @@ def _notes(columns: list[Column]) -> tuple[str, ...]:
         "A share is weight times slope of a leg on the signal, all legs on one shared sample; standard errors in "
         "parentheses, intervals in brackets. The shares add up to one by an accounting identity. The resolved premium "
         "share is the premium share over all that is not carried over.",
-        "Slopes speak of variation in the spread: entity effects absorb standing premia, which the levels show. "
-        "R2 is within the effects. Levels are in percent, a log ratio as it is.",
+        *([STANDING] if any(_method(column).startswith("entity") for column in columns) else []),
+        "R2 is within the effects, or centred where there are none. Levels are in percent, a log ratio and columns of "
+        "your own as they are.",
         *methods,
-        *([HORIZON_MIX] if mixed else []),
         *warnings,
     )
 
