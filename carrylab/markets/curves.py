@@ -36,7 +36,7 @@ class YieldCurves:
         if key not in self._known:
             self._known[key] = self._find(maturity)
         if same_length(self.quoted, maturity.years) is None:
-            self.used.add(str(maturity))
+            self.used.add(maturity.canonical)
         return self._known[key]
 
     def price(self, maturity: Tenor) -> Floats:

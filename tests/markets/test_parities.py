@@ -37,7 +37,7 @@ def test_the_legs_add_up_to_the_signal_on_any_data(case: Case, seed: int, holes:
 def test_shapes_names_and_the_rows_of_the_legs(case: Case) -> None:
     for parity in built(random_market(case, 1)):
         T, N = parity.signal.shape
-        assert (T, N) == (len(parity.calendar), len(parity.entities))
+        assert (len(parity.calendar), len(parity.entities)) == (T, N)
         assert len({entity.name for entity in parity.entities}) == N
         assert parity.name == case.parity
         assert [leg.role for leg in parity.legs].count("return") == 1
