@@ -210,7 +210,8 @@ WEEKS = {("EA", f"{n}m"): [0.01, 0.02, 0.03] for n in (1, 12)}
             {"horizons": "1y", "maturities": "5y", "missing_maturity": "flat forward"},
             DataError,
             "missing_maturity is 'flat forward'; quote it, choose other maturities or horizons, or set "
-            'missing_maturity to "linear in yield", "flat forward" or "cubic in yield", which fill between the quoted ones only',
+            'missing_maturity to "linear in yield", "flat forward" or "cubic in yield", which fill between the '
+            "quoted ones only",
         ),
         (
             "yield-spread-to-maturity",
