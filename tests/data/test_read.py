@@ -12,10 +12,10 @@ from declared import Put
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from carrylab.data.calendar import Interval, parse_tenor
-from carrylab.data.read import Table, read_market, read_source
+from carrylab.data.calendar import Interval, Tenor, label, parse_tenor
+from carrylab.data.read import Table, read_market, read_panel, read_source
 from carrylab.errors import DataError
-from carrylab.options import Inference, Market, Source
+from carrylab.options import Inference, LegColumn, Market, PanelColumns, Source
 
 COUNTS = ["read", "missing", "duplicates", "outside", "superseded", "used"]
 
@@ -305,3 +305,22 @@ def test_a_wide_file_of_four_megabytes_costs_no_more_than_a_few_plain_readings(p
 def _seconds(work: Callable[[], object]) -> float:
     """The shortest of three."""
     return min(timeit.repeat(work, number=1, repeat=3))
+
+
+def test_a_series_published_late_stands_in_the_period_in_which_it_was_known(tmp_path: Path) -> None:
+    # December's value, out six weeks later on 11 February, is February's; January's (14 March) is March's.
+    path = tmp_path / "dividends.csv"
+    path.write_text("date,economy,value\n2003-12-31,EA,1\n2004-01-31,EA,2\n", encoding="utf-8")
+    source = Source("dividends", path, "dividends.csv", known_after=Tenor(days=42))
+    frame = read_source(source, interval="month", first=None, last=None).frame
+    assert [label(int(number), "month") for number in frame["ordinal"]] == ["2004-02", "2004-03"]
+    assert list(frame["value"]) == [1.0, 2.0]
+
+
+def test_a_panel_takes_no_publication_lag(tmp_path: Path) -> None:
+    path = tmp_path / "panel.csv"
+    path.write_text("date,x,y\n2004-01,1,2\n", encoding="utf-8")
+    source = Source("panel", path, "panel.csv", known_after=Tenor(months=1))
+    panel = PanelColumns(None, "x", (LegColumn("y", "y"),))
+    with pytest.raises(DataError, match="known_after is declared for a panel"):
+        read_panel(source, panel, interval="month", first=None, last=None)

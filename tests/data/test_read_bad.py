@@ -111,12 +111,6 @@ CELLS: dict[str, tuple[str, dict[str, object], str]] = {
         {},
         "row 3, column 'maturity': maturity '12' is no length of time; write a number and d, w, m, q or y, such as 12m",
     ),
-    "a publication lag of the spread itself": (
-        LONG + "2024-01,QM,1m,1\n",
-        {"known_after": parse_tenor("1m")},
-        "known_after is declared for zero_yields; allowed is a lag for an added predictor, for a spread and its "
-        "outcomes stand at their own dates; date late values by the day they were known",
-    ),
     "a maturity of zero": (
         LONG + "2024-01,QM,0m,1\n",
         {},
