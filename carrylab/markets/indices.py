@@ -70,8 +70,8 @@ def _dividends(data: MarketData, prices: Panel, key: str) -> tuple[Floats, tuple
     """Dividends of the last twelve months (T, N), a hole where they are not above zero, and how they were made."""
     a_year = periods_in(data, YEAR)
     if "dividends" in data.tables:
-        declared = _declared(data, prices, key)
-        return _positive(trailing(declared, a_year) if _per_period(data) else declared), ()
+        per_period, declared = _per_period(data), _declared(data, prices, key)
+        return _positive(trailing(declared, a_year) if per_period else declared), ()
     index = levels(data.tables["total_return"], data.calendar, key).pick(prices.codes)
     beyond = index / before(index) - prices.values / before(prices.values)
     note = "dividends are price times the difference of total and price return, summed over twelve months"
