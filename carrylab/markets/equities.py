@@ -53,6 +53,7 @@ def _entity(code: str, market: Market, economies: Mapping[str, str]) -> Entity:
 def dividend_price(data: MarketData, world: Equities, entities: tuple[Entity, ...], horizon: Tenor) -> Parity:
     """Log dividend-price ratio against discounted sums of returns, rates and growth, and the future ratio."""
     years = horizon.months // 12
+    bound = APPROXIMATION_BOUND if data.market.tolerance is None else data.market.tolerance
     dp = np.log(world.dividend) - np.log(world.price)
     rho = _rho(data.market, dp)
     riskless, riskless_name, rate_notes = _riskless_year(data, world)
@@ -78,7 +79,7 @@ def dividend_price(data: MarketData, world: Equities, entities: tuple[Entity, ..
             Leg("future dividend-price ratio", "carried over", lead(dp, at), rho**years),
             Leg("approximation", "approximation", sums["approximation"], 1.0),
         ),
-        approximation_bound=(data.market.tolerance or APPROXIMATION_BOUND) * sum(rho**j for j in range(years)),
+        approximation_bound=bound * sum(rho**j for j in range(years)),
         rho=rho,
         notes=(rho_note, *world.notes, *rate_notes, *step_notes),
     )
