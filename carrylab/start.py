@@ -16,7 +16,7 @@ from typing import get_args
 from carrylab import options
 from carrylab.data.calendar import INTERVALS, Interval, parse_tenor
 from carrylab.sources import KIND_ROLES
-from carrylab.start_guess import LENGTHS, Head, read_head
+from carrylab.start_guess import LENGTHS, VALUES, Head, read_head
 
 Lines = Iterator[str]
 # An equity market takes exchange rates only when its returns are wanted in the home currency.
@@ -43,8 +43,11 @@ def _study(heads: Sequence[Head], study: Path) -> Lines:
     yield "# Begun by `carrylab start`. A line that carries the word question waits for you: take away the leading"
     yield f"# hash, put in the right word, and then run: carrylab check {study.name}"
     yield f"title = {_text('Is the spread paid or passed on?')}"
-    home = _home(heads)
-    yield _asked("home", _text(home or "USD"), f"the home currency{f'; {home} stands in every pair' if home else ''}")
+    if any(role in head.roles for head in heads for role in PRICES):
+        home = _home(heads)
+        yield _asked(
+            "home", _text(home or "USD"), f"the home currency{f'; {home} stands in every pair' if home else ''}"
+        )
     yield from _economies(heads)
     for kind, makers in MAKES.items():
         if any(role in head.roles for head in heads for role in makers):
@@ -221,7 +224,9 @@ def _length_key(role: str) -> str:
 
 def _words(head: Head, length: str) -> dict[str, str]:
     """Word of the study -> column of the file."""
-    return {"date": head.dates.column} | {length if key in LENGTHS else key: name for key, name in head.keys.items()}
+    keys = {length if key in LENGTHS else key: name for key, name in head.keys.items()}
+    quotes = {name.lower(): name for name in head.values if name.lower() in VALUES}
+    return {"date": head.dates.column} | keys | quotes
 
 
 def _constants(role: str, head: Head) -> Lines:

@@ -16,6 +16,7 @@ Cells = Mapping[str, Sequence[str]]
 SYNONYMS: Mapping[str, str] = {"country": "economy", "ccy": "currency", "term": "tenor"}
 KEYS = ("economy", "currency", "pair", "index", "entity", "maturity", "tenor")
 LENGTHS = ("maturity", "tenor")
+VALUES = ("value", "bid", "ask")
 SHAPES: tuple[tuple[str, re.Pattern[str]], ...] = (
     ("pair", re.compile(r"[A-Z]{3}/?[A-Z]{3}")),
     ("currency", re.compile(r"[A-Z]{3}")),
@@ -213,7 +214,8 @@ def _roles(
     path: Path, shape: tuple[Mapping[str, str], str, Mapping[str, str]], values: Sequence[str]
 ) -> dict[str, str]:
     keys, spread, lengths = shape
-    if spread or len(values) == 1 or "value" in values or {"bid", "ask"} <= set(values):
+    names = {name.lower() for name in values}
+    if spread or len(values) == 1 or "value" in names or {"bid", "ask"} <= names:
         role = named_role(path.stem) or _structural(set(keys) | {spread}, lengths)
         return {role: "" if spread or len(values) > 1 else values[0]} if role else {}
     by_column = {named_role(name): name for name in reversed(values)}

@@ -321,6 +321,14 @@ def test_share_prices_bring_their_own_bill_rate(tmp_path: Path) -> None:
 def test_other_names_are_mapped(tmp_path: Path) -> None:
     path = write(tmp_path, "spot.csv", "obs_date,ccy,rate\n" + months(12, "JPY,147.2"))
     assert '\ncolumns = { obs_date = "date", ccy = "currency" }\n' in begun(tmp_path, path)
+    path = write(tmp_path, "fx.csv", "Date,Pair,Bid,Ask\n" + months(12, "EUR/USD,1.5,1.6"))
+    mapped = '\ncolumns = { Date = "date", Pair = "pair", Bid = "bid", Ask = "ask" }\n'
+    assert mapped in begun(tmp_path, path)
+
+
+def test_home_is_asked_only_where_there_are_currencies(tmp_path: Path) -> None:
+    assert "home" not in begun(tmp_path, DEMO / "zero_yields_sparse.csv")
+    assert question(begun(tmp_path, DEMO / "fx_spot.csv"), "home").startswith('# home = "QMT"')
 
 
 def test_paths_are_relative_to_the_study(tmp_path: Path) -> None:
