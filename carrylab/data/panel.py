@@ -160,7 +160,7 @@ def _log_rates(table: Table, key: str, length: str) -> Floats:
         row = frame.iloc[int(np.flatnonzero(np.isnan(found))[0])]
         what = "discount factor" if source.compounding == "discount factor" else f"{source.compounding} rate"
         raise DataError(
-            f"{source.file}: row {row['row']}: a {what} of {row['value']:g} {source.unit} leaves no growth factor "
+            f"{source.file}: row {row['row']}: the {what} {row['value']:g} {source.unit} leaves no growth factor "
             "above zero; check unit and compounding"
         )
     return found
