@@ -1,0 +1,3 @@
+"""Doctests are looked for in every module but these, which share one name."""
+
+collect_ignore_glob = ["*/conftest.py"]
