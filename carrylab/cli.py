@@ -60,7 +60,7 @@ def check(study: Path) -> None:
 @STUDY
 @click.option("--into", type=click.Path(path_type=Path), help="Run folder [default: NAME_results here].")
 @click.option("--audit", is_flag=True, help="Recompute the headline with linearmodels and statsmodels.")
-@click.option("--parquet", is_flag=True, help="Also write findings.parquet (needs pyarrow).")
+@click.option("--parquet", is_flag=True, help="Insist on findings.parquet (written wherever pyarrow is installed).")
 @click.option("--width", type=click.IntRange(60, 400), default=100, show_default=True, help="Columns of text.")
 def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int) -> None:
     """Run STUDY, print the report and write the run folder."""

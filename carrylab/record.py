@@ -39,16 +39,18 @@ class Run:
 def save(run: Run, directory: Path, *, parquet: bool) -> Path:
     """Write the run folder beside its place and rename it into place when it is whole.
 
+    findings.parquet is written wherever pyarrow is installed; `parquet` insists on it (ExtraError).
     An older run folder of the same name is replaced; any other folder or file of that name is refused.
     """
-    if parquet and find_spec("pyarrow") is None:
+    installed = find_spec("pyarrow") is not None
+    if parquet and not installed:
         raise ExtraError("findings.parquet needs pyarrow; install carrylab with its parquet extra")
     _require_free(directory)
     directory.parent.mkdir(parents=True, exist_ok=True)
     with tempfile.TemporaryDirectory(prefix=f".{directory.name}-", dir=directory.parent) as made:
         fresh = Path(made) / "run"
         fresh.mkdir()
-        _write(run, fresh, parquet=parquet)
+        _write(run, fresh, parquet=installed)
         if directory.exists():
             directory.rename(Path(made) / "old")
         fresh.rename(directory)

@@ -52,7 +52,7 @@ class Results:
         return pd.concat([_panel_of(parity) for parity in self.parities], ignore_index=True)
 
     def save(self, directory: str | os.PathLike[str], *, parquet: bool = False, width: int = 100) -> Path:
-        """Write the run folder: report.txt, findings.csv, panel.csv and run.json; findings.parquet on request."""
+        """Write the run folder: report.txt, findings.csv, panel.csv, run.json; findings.parquet with pyarrow."""
         files = [s.path for market in self.study.markets for found in market.sources.values() for s in found]
         files += [source.path for market in self.study.markets for source in market.controls]
         account = {

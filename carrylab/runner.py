@@ -232,6 +232,8 @@ def _other_rho(parity: Parity, built: Built, economies: Mapping[str, str]) -> li
         return []
     rows: list[Row] = []
     for step in (-RHO_STEP, RHO_STEP):
+        if not 0 < parity.rho + step < 1:
+            continue
         other = replace(built.market, rho=parity.rho + step, parities=(parity.name,), horizons=(parity.horizon,))
         again = _kept(MARKETS[other.kind](replace(built.data, market=other), economies)[0], other)
         found = _fit(again, sample_of(again, built.data)[0], "pooled", other, f"rho {step:+.2f}")

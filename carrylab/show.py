@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
+from types import MappingProxyType
 from typing import TypeVar
 
 import numpy as np
@@ -17,6 +18,40 @@ from carrylab.runner import Built, build
 from carrylab.schema import nearest
 
 Thing = TypeVar("Thing", Market, Parity)
+FORMULAS: Mapping[str, tuple[str, ...]] = MappingProxyType(
+    {
+        "forward-spot": (
+            "signal p_t(n-h) - p_t(n) - h y_t(h), with p(n) = -n y(n)",
+            "excess return p_{t+h}(n-h) - p_t(n) - h y_t(h), rate rise (n-h) [y_{t+h}(n-h) - y_t(n-h)]",
+        ),
+        "forward-spot-far": (
+            "signal p_t(n-k) - p_t(n) - k y_t(k), with p(n) = -n y(n) and k the short maturity",
+            "rate rise k [y_{t+n-k}(k) - y_t(k)], excess return of the n-bond over the (n-k)-bond held n-k years",
+        ),
+        "yield-spread": (
+            "signal m/(n-m) [y_t(n) - y_t(m)], m the horizon",
+            "excess return over n-m, long-rate rise y_{t+m}(n-m) - y_t(n)",
+        ),
+        "yield-spread-to-maturity": (
+            "signal y_t(n) - y_t(m), n = k m",
+            "average of the k m-rates from t less today's, average excess return of the n-bond over rolling m-bonds",
+        ),
+        "uncovered-interest": (
+            "signal h (i* - i), excess return s_{t+h} - s_t + h (i* - i), appreciation s_{t+h} - s_t",
+            "s is the log home price of one unit of foreign currency",
+        ),
+        "forward-discount": (
+            "signal s_t - f_t, excess return s_{t+h} - f_t, appreciation s_{t+h} - s_t",
+            "s is the log home price of one unit of foreign currency",
+        ),
+        "dividend-price": (
+            "signal ln(D/P); legs are sums over years j of rho^(j-1) x, the future ratio has weight rho^h",
+            "approximation [ln((P'+D')/P) - sum of monthly returns] - [ln(1+e^-dp') + rho dp'] of each year",
+        ),
+        "carry": ("signal: the return over the horizon if prices stay where they are",),
+        "columns": ("signal and legs as they stand in the file",),
+    }
+)
 
 
 def show_row(study: Study, *, market: str | None, parity: str | None, entity: str | None, date: str | None) -> str:
@@ -82,7 +117,7 @@ def _lines(built: Built, parity: Parity, t: int, i: int) -> list[str]:
     for tables in built.data.tables.values():
         for table in tables:
             lines += _cells(table, entity, _tenors(parity, entity), built.data, (t, end))
-    lines += ["", "As built (log units over the horizon)"]
+    lines += ["", "As built (log units over the horizon)", *(f"  {text}" for text in FORMULAS[parity.name])]
     lines.append(f"  {'signal: ' + parity.signal_name:<46}{'':>10}{parity.signal[t, i]:>14.8f}")
     for leg in parity.legs:
         weight = "" if leg.weight is None else f"x {leg.weight:+.4f}"

@@ -12,6 +12,7 @@ from carrylab.regression.effects import blocks
 from carrylab.regression.fit import Estimate
 from carrylab.regression.sample import Floats, Sample
 
+CANCELLED = 1e-16  # part of the variance by row below which a clustered variance is rounding
 By = Literal["entity", "date", "both"]
 ClusterFactor = Literal["none", "n/(n-k)", "clusters", "clusters, one factor"]
 
@@ -74,6 +75,8 @@ def clustered(sample: Sample, estimate: Estimate, by: By, factor: ClusterFactor)
             f"clustered: {by} needs at least two clusters and there is {smallest}; choose another kind"
         )
 
+    _require_variance(sums, by, smallest)
+
     def scale(name: str) -> float:
         return cluster_factor(factor, n, k, sizes[name] if factor == "clusters" else smallest)
 
@@ -82,6 +85,16 @@ def clustered(sample: Sample, estimate: Estimate, by: By, factor: ClusterFactor)
     if by == "date":
         return Clustered(sums.date * scale("date"), smallest, "")
     return _both(sums.entity * scale("entity"), sums.date * scale("date"), sums.row * scale("row"), smallest)
+
+
+def _require_variance(sums: Meats, by: By, clusters: int) -> None:
+    """Refuse one-way clusters whose scores cancel, as those of two entities do under time effects."""
+    summed = {"entity": sums.entity, "date": sums.date, "both": sums.row}[by]
+    if (np.diag(summed) < CANCELLED * np.diag(sums.row)).any():
+        raise InferenceError(
+            f"clustered: {by} leaves no variance: under these effects the scores of {clusters} clusters cancel; choose "
+            "another kind or other effects"
+        )
 
 
 def counted_parameters(estimate: Estimate, by: By) -> int:

@@ -8,7 +8,7 @@ from typing import Any
 
 import pandas as pd
 
-from carrylab.report.numbers import digits_of, fixed
+from carrylab.report.numbers import digits_of, fixed, in_brackets
 from carrylab.report.table import (
     Cell,
     Line,
@@ -28,14 +28,14 @@ SHOWN_CHECKS = ("error", "warning")
 
 def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
     """One table a market, parity and horizon."""
-    shares = findings[(findings["section"] == "shares") & (findings["sample"] == "all")]
+    shares = findings[findings["section"] == "shares"]
     for key, rows in shares.groupby(["market", "parity", "horizon"], sort=False):
         market, parity, horizon = (str(part) for part in key)
         yield _detail(f"{market}: {parity}, {horizon}", rows)
 
 
 def _detail(title: str, rows: pd.DataFrame) -> Table:
-    headline = rows[rows["rank"] == "headline"]
+    headline = rows[(rows["rank"] == "headline") & (rows["sample"] == "all")]
     own_p = not (headline["term"] == "nothing paid").any()
     head: list[str] = []
     legs = [str(leg) for leg in headline.loc[headline["term"] == "signal", "leg"].unique()]
@@ -45,22 +45,34 @@ def _detail(title: str, rows: pd.DataFrame) -> Table:
     by_group: dict[str, list[Record]] = {}
     for record in headline.to_dict("records"):
         by_group.setdefault(str(record["group"]), []).append(record)
+    digits = _digits(headline)
     lines: list[Line] = []
     for group in sorted(by_group, key=lambda name: name == "pooled"):
-        lines += _group_lines(group, by_group[group], legs, own_p)
+        lines += _group_lines(group, by_group[group], legs, digits)
     return Table(
         title=title,
         head=(*head, "obs.", "from", "to"),
         lines=tuple(lines),
-        notes=_detail_notes(headline),
+        notes=(*_detail_notes(headline), *_resolved_note(rows)),
         corner="slopes",
     )
 
 
-def _group_lines(group: str, records: list[Record], legs: list[str], own_p: bool) -> Iterator[Line]:
+def _digits(rows: pd.DataFrame) -> dict[tuple[str, str], int]:
+    """Decimals of each leg and term, the same down a column: two figures of its middling standard error."""
+    middle = rows[rows["std_error"] > 0].groupby(["leg", "term"])["std_error"].median()
+    return {
+        (str(key[0]), str(key[1])): digits_of(float(error)) for key, error in zip(middle.index, middle, strict=True)
+    }
+
+
+def _group_lines(
+    group: str, records: list[Record], legs: list[str], digits: dict[tuple[str, str], int]
+) -> Iterator[Line]:
     """Slope and error of every leg, the signal first and then each added predictor."""
     at = {(record["leg"], record["term"]): record for record in records}
     p = {record["term"]: record["p_value"] for record in records}
+    own_p = "nothing paid" not in p
     first = records[0]
     tests = () if own_p else tuple(p_cell(p.get(term, math.nan)) for term in ("nothing paid", "all paid"))
     end = (*tests, count_cell(first["n_obs"]), word_cell(first["first"]), word_cell(first["last"]))
@@ -71,9 +83,9 @@ def _group_lines(group: str, records: list[Record], legs: list[str], own_p: bool
         lower: list[Cell] = []
         for leg in legs:
             record = at[leg, term]
-            digits = digits_of(record["std_error"])
-            upper += [number_cell(record["estimate"], digits), number_cell(record["r2"], 3) if signal else Cell()]
-            lower += [error_cell(record["std_error"], digits), Cell()]
+            shown = digits.get((leg, str(term)), 2)
+            upper += [number_cell(record["estimate"], shown), number_cell(record["r2"], 3) if signal else Cell()]
+            lower += [error_cell(record["std_error"], shown), Cell()]
             upper += [p_cell(record["p_value"])] if own_p else []
             lower += [Cell()] if own_p else []
         yield Line(group if signal else f"  {term}", (*upper, *(end if signal else blank)))
@@ -83,12 +95,19 @@ def _group_lines(group: str, records: list[Record], legs: list[str], own_p: bool
 def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
     signal = rows[rows["term"] == "signal"]
     nulls = [
-        f"{row['leg']} {fixed(row['null'], 0)}"
+        f"{row['leg']} {row['null']:g}"
         for row in signal.drop_duplicates("leg").to_dict("records")
         if not math.isnan(row["null"])
     ]
-    methods = " / ".join(dict.fromkeys(signal["method"]))
-    said = [f"Slope of each leg on the signal, standard errors in parentheses: {methods}."]
+    effects, _, _ = str(signal["method"].iloc[0]).partition("; ")
+    pooled = signal[signal["group"] == "pooled"]
+    by_method: dict[str, list[str]] = {}
+    for row in pooled.to_dict("records"):
+        by_method.setdefault(str(row["method"]).partition("; ")[2], []).append(str(row["leg"]))
+    methods = "; ".join(f"{', '.join(legs)}: {method}" for method, legs in by_method.items())
+    said = [f"Slope of each leg on the signal, {effects}; standard errors in parentheses. Pooled errors: {methods}."]
+    if signal.groupby("leg")["method"].nunique().max() > 1:
+        said.append("Groups with fewer dates have fewer cosines or lags; findings.csv names those of each.")
     if nulls:
         said.append(f"Slopes when expected returns are constant: {', '.join(nulls)}.")
     weights = signal.drop_duplicates("leg").dropna(subset="weight")
@@ -96,6 +115,19 @@ def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
         listed = ", ".join(f"{row['leg']} {row['weight']:+.4g}" for row in weights.to_dict("records"))
         said.append(f"Weights in the identity: {listed}.")
     return tuple(said)
+
+
+def _resolved_note(rows: pd.DataFrame) -> tuple[str, ...]:
+    """The resolved premium share of a ratio, and again at other discount coefficients."""
+    resolved = rows[(rows["term"] == "resolved premium share") & (rows["group"] == "pooled")]
+    if len(resolved) < 2:
+        return ()
+    said = [
+        f"{fixed(row['estimate'])} {in_brackets(row['lower'], row['upper'])}"
+        + ("" if row["sample"] == "all" else f" at {row['sample']}")
+        for row in resolved.to_dict("records")
+    ]
+    return (f"Resolved premium share, pooled: {'; '.join(said)}.",)
 
 
 def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str) -> Table | None:

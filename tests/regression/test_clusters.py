@@ -7,6 +7,7 @@ from carrylab.errors import InferenceError
 from carrylab.regression.clusters import cluster_factor, clustered
 from carrylab.regression.covariance import ErrorOptions, standard_errors
 from carrylab.regression.fit import fit
+from carrylab.regression.sample import make_sample
 
 from .samples import build, random_sample
 
@@ -101,3 +102,15 @@ def test_one_cluster_is_refused() -> None:
 def test_factors_by_hand() -> None:
     assert cluster_factor("clusters", 100, 4, 10) == pytest.approx(10 / 9 * 99 / 96)
     assert cluster_factor("n/(n-k)", 100, 4, 10) == pytest.approx(100 / 96)
+
+
+def test_two_entities_under_time_effects_leave_no_variance() -> None:
+    rng = np.random.default_rng(8)
+    x = rng.normal(size=(30, 2, 1))
+    y = rng.normal(size=(30, 2, 1))
+    steps = np.ones(30, dtype=np.int64)
+    sample = make_sample(x, y, terms=("signal",), legs=("return",), steps=steps, overlap=0, one_step=(None,))
+    estimate = fit(sample, effects="time")
+    with pytest.raises(InferenceError, match="scores of 2 clusters cancel"):
+        clustered(sample, estimate, "entity", "clusters")
+    assert clustered(sample, estimate, "date", "clusters").covariance[0, 0] > 0
