@@ -222,9 +222,8 @@ def window(calendar: Calendar, horizon: Tenor, max_gap: int | None = None) -> Wi
     """Find the row that ends each origin's horizon.
 
     A whole number of periods is counted in periods. Otherwise (a month on a day or week calendar, a week on a day
-    calendar) the outcome
-    is read in the last period that ends on or before t + h, at most `max_gap` days earlier (5 on a day
-    calendar, 6 on a week calendar). Raises ValueError where a month, quarter or year calendar cannot hold the
+    calendar) the outcome is read in the last period that ends on or before t + h, at most `max_gap` days earlier (5 on
+    a day calendar, 6 on a week calendar). Raises ValueError where a month, quarter or year calendar cannot hold the
     horizon.
     """
     T = len(calendar)

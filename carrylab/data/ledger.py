@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
-from carrylab.data.calendar import Interval, Ints
+from carrylab.data.calendar import Days, Interval, Ints, add
 from carrylab.errors import DataError
 from carrylab.options import Source
 
@@ -30,6 +30,10 @@ class Span:
     def keeps_every_date(self, source: Source) -> bool:
         """Whether a date counts by when it was known rather than by its period."""
         return self.control and source.known_after is not None
+
+    def stands(self, source: Source, days: Days) -> Days:
+        """The day from which each value counts: a series published late when it was known, in signals and outcomes."""
+        return days if self.control or source.known_after is None else add(days, source.known_after)
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -62,7 +66,7 @@ def account(
         return rows[~gone] if gone.any() else rows
 
     frame = without(frame, "missing", _missing(frame, names))
-    frame = without(frame, "outside", _outside(frame, span))
+    frame = without(frame, "outside", _outside(source, frame, span))
     if source.role in ABOVE_ZERO and source.quote != "points" and not span.control:
         _require_above_zero(source, frame, labels, names)
     frame = frame.iloc[np.lexsort((frame["row"], frame["date"], frame["series"]))]
@@ -89,8 +93,8 @@ def _missing(frame: pd.DataFrame, names: Sequence[str]) -> Flags:
     return np.asarray(enough(holes, axis=1))
 
 
-def _outside(frame: pd.DataFrame, span: Span) -> Flags:
-    days = frame["date"].to_numpy()
+def _outside(source: Source, frame: pd.DataFrame, span: Span) -> Flags:
+    days = span.stands(source, frame["date"].to_numpy().astype("datetime64[D]"))
     gone = np.zeros(len(frame), dtype=bool)
     if span.first is not None:
         gone |= days < span.first

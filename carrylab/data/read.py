@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 import pandas as pd
 
-from carrylab.data.calendar import Calendar, Interval, add, make_calendar, ordinal
+from carrylab.data.calendar import Calendar, Interval, make_calendar, ordinal
 from carrylab.data.dates import bound, read_dates
 from carrylab.data.files import read_cells
 from carrylab.data.ledger import Span, account
@@ -105,10 +105,8 @@ def _table(source: Source, span: Span, panel: PanelColumns | None) -> Table:
     cells = read_cells(source)
     layout = find_layout(source, list(cells.columns), panel)
     days, numbers = read_dates(source, cells[layout.date], span.interval, coarse=span.keeps_every_date(source))
-    if source.known_after is not None and not span.control:
-        # A series published late stands in the period in which it was known, in signals and outcomes alike.
-        days = add(days, source.known_after)
-        numbers = ordinal(days, span.interval)
+    if source.known_after is not None:
+        numbers = ordinal(span.stands(source, days), span.interval)
     frame, keys = long_rows(source, cells, layout)
     repeat = len(frame) // len(cells)
     frame.insert(2, "date", np.repeat(days.astype("datetime64[s]"), repeat))

@@ -267,6 +267,13 @@ def test_a_week_on_a_day_calendar_is_a_week_of_the_calendar_whatever_was_observe
     assert window(calendar, parse_tenor("2d")).ends.tolist() == [2, 3, 4, -1, -1]
 
 
+def test_thirty_days_on_a_week_calendar_hold_four_further_origins() -> None:
+    found = window(make_calendar("week", np.arange(2800, 2820)), parse_tenor("30d"))
+    # Sundays 7, 14, 21 and 28 days on lie inside thirty days; the last of them is read.
+    assert found.overlap == 4
+    assert found.ends[:2].tolist() == [4, 5]
+
+
 def test_a_month_on_a_week_calendar_always_finds_a_week() -> None:
     calendar = make_calendar("week", ordinal(days("2024-01-07", "2024-12-29"), "week"))
     found = window(calendar, parse_tenor("1m"))

@@ -317,6 +317,22 @@ def test_a_series_published_late_stands_in_the_period_in_which_it_was_known(tmp_
     assert list(frame["value"]) == [1.0, 2.0]
 
 
+def test_days_that_become_known_together_are_no_contradiction(put: Put) -> None:
+    # 30 and 31 January are both known on 29 February; the later one counts, and the dates stay their own.
+    source = replace(put("date,economy,value\n2004-01-30,EA,1\n2004-01-31,EA,2\n"), known_after=Tenor(months=1))
+    table = read_source(source, interval="day", first=None, last=None)
+    assert table.frame["date"].dt.strftime("%Y-%m-%d").tolist() == ["2004-01-31"]
+    assert [label(int(number), "day") for number in table.frame["ordinal"]] == ["2004-02-29"]
+    assert table.ledger["superseded"].tolist() == [1]
+
+
+def test_until_bounds_what_was_known(put: Put) -> None:
+    source = replace(put("date,economy,value\n2004-01-31,EA,1\n2004-02-29,EA,2\n"), known_after=Tenor(months=1))
+    table = read_source(source, interval="month", first="2004-02", last="2004-02")
+    assert table.frame["value"].tolist() == [1.0]
+    assert table.ledger["outside"].tolist() == [1]
+
+
 def test_a_panel_takes_no_publication_lag(tmp_path: Path) -> None:
     path = tmp_path / "panel.csv"
     path.write_text("date,x,y\n2004-01,1,2\n", encoding="utf-8")
