@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -53,46 +53,33 @@ class Curves:
         return Panel(self.codes, self.values[:, :, self.tenors.index(tenor)])
 
 
-@dataclass(frozen=True, eq=False, slots=True)
-class Quotes:
-    """Exchange rates: `home` are log home prices of foreign currency, `crosses` log prices of pairs without home.
-
-    Codes of `crosses` are pairs as written, base first.
-    """
-
-    home: Panel
-    crosses: Panel
-
-
 def levels(tables: Sequence[Table], calendar: Calendar, key: str) -> Panel:
     """Raw values of plain series by one key (T, N)."""
     codes = sorted({code for table in tables for code in _codes(table, key)})
     values = np.full((len(calendar), len(codes)), np.nan)
     for table in tables:
         frame = table.frame
-        _put(table, values, (calendar.locate(frame["ordinal"].to_numpy()), _places(frame, key, codes)), _mid(frame))
+        _put(table, values, (calendar.locate(frame["ordinal"].to_numpy()), _places(frame, key, codes)), middle(frame))
     return Panel(tuple(codes), values)
 
 
 def curves(tables: Sequence[Table], calendar: Calendar, key: str, length: str) -> Curves:
     """Declared rates as log rates per year (T, N, M), with length x rate the log growth over the length."""
+    return by_length(tables, calendar, key=key, length=length, values_of=lambda table: _log_rates(table, key, length))
+
+
+def by_length(
+    tables: Sequence[Table], calendar: Calendar, *, key: str, length: str, values_of: Callable[[Table], Floats]
+) -> Curves:
+    """Values of every row of the tables, laid out by period, code and length (T, N, M)."""
     codes = sorted({code for table in tables for code in _codes(table, key)})
-    names = sorted({name for table in tables for name in _codes(table, length)}, key=_order)
+    names = sorted({name for table in tables for name in _codes(table, length)}, key=parse_tenor)
     values = np.full((len(calendar), len(codes), len(names)), np.nan)
     for table in tables:
         frame = table.frame
         rows = calendar.locate(frame["ordinal"].to_numpy())
-        _put(
-            table,
-            values,
-            (rows, _places(frame, key, codes), _places(frame, length, names)),
-            _log_rates(table, key, length),
-        )
+        _put(table, values, (rows, _places(frame, key, codes), _places(frame, length, names)), values_of(table))
     return Curves(tuple(codes), tuple(parse_tenor(name) for name in names), values)
-
-
-def _order(name: str) -> tuple[float, str]:
-    return parse_tenor(name).years, name
 
 
 def _codes(table: Table, key: str) -> list[str]:
@@ -110,7 +97,7 @@ def _places(frame: pd.DataFrame, key: str, codes: Sequence[str]) -> np.typing.ND
     return np.array([place.get(str(code), -1) for code in categories], dtype=np.int64)[frame[key].cat.codes.to_numpy()]
 
 
-def _mid(frame: pd.DataFrame) -> Floats:
+def middle(frame: pd.DataFrame) -> Floats:
     """The value, or the two-way quote's middle in logs, so that turning the quote round is exact.
 
     A quote with one side only has no middle.
@@ -181,137 +168,3 @@ def _accruals(table: Table, key: str, tenors: Sequence[Tenor], of_row: np.typing
             here = (of_row == number) & np.isin(of_code, [at for at, own in enumerate(counts) if own == count])
             tau[here] = accrual(days, ends, count)[at_day[here]]  # type: ignore[arg-type]
     return tau
-
-
-def spot_quotes(tables: Sequence[Table], calendar: Calendar, home: str) -> Quotes:
-    """Spot rates of every declared direction as log home prices of foreign currency; home in itself is left out."""
-    found: dict[str, Floats] = {}
-    crosses: dict[str, Floats] = {}
-    for table in tables:
-        panel = levels((table,), calendar, _quote_key(table))
-        for at, code in enumerate(panel.codes):
-            log_price, (base, quote) = np.log(panel.values[:, at]), _pair(table.source, code, home)
-            if base != quote and home in (base, quote):
-                currency, sign = _foreign(base, quote, home)
-                found[currency] = _joined(table.source, found.get(currency), sign * log_price, currency)
-            elif base != quote:
-                crosses[code] = _joined(table.source, crosses.get(code), log_price, code)
-    if not found:
-        raise DataError(f"{tables[0].source.file}: no pair with the home currency {home!r}; check home and the pairs")
-    return Quotes(_panel(found, len(calendar)), _panel(crosses, len(calendar)))
-
-
-def _panel(columns: Mapping[str, Floats], T: int) -> Panel:
-    codes = sorted(columns)
-    return Panel(tuple(codes), np.stack([columns[code] for code in codes], axis=1) if codes else np.empty((T, 0)))
-
-
-def _joined(source: Source, old: Floats | None, new: Floats, name: str) -> Floats:
-    if old is None:
-        return new
-    both = np.isfinite(old) & np.isfinite(new)
-    if (np.abs(old - new)[both] > 1e-9).any():
-        raise DataError(f"{source.file}: {name} is quoted twice with different values; keep one source")
-    return np.where(np.isfinite(old), old, new)
-
-
-def split_pair(source: Source, pair: str) -> tuple[str, str]:
-    """Base and quote of a pair written BBBQQQ or BBB/QQQ."""
-    parts = pair.split("/") if "/" in pair else [pair[:3], pair[3:]]
-    if len(parts) != 2 or not all(len(part) == 3 for part in parts):
-        raise DataError(f"{source.file}: pair {pair!r} is not allowed; allowed are BBBQQQ and BBB/QQQ, base first")
-    return parts[0], parts[1]
-
-
-def _pair(source: Source, code: str, home: str) -> tuple[str, str]:
-    """Base and quote currency of one series."""
-    if source.quote == "pair":
-        return split_pair(source, code)
-    return (code, home) if source.quote == "home per foreign" else (home, code)
-
-
-def _foreign(base: str, quote: str, home: str) -> tuple[str, float]:
-    """Foreign currency of a pair with home, and the sign that makes its log a home price."""
-    return (base, 1.0) if quote == home else (quote, -1.0)
-
-
-def forward_quotes(tables: Sequence[Table], spot: Sequence[Table], calendar: Calendar, home: str) -> Curves:
-    """Outright forwards as log home prices of foreign currency (T, N, M); points are added to their own spot quote."""
-    found: dict[tuple[str, str], Floats] = {}
-    quoted = [(table.source, levels((table,), calendar, _quote_key(table))) for table in spot]
-    for table in tables:
-        raw = _raw_curves(table, calendar, "pair" if "pair" in table.keys else "currency")
-        for n, code in enumerate(raw.codes):
-            for m, tenor in enumerate(raw.tenors):
-                log_price, currency = _outright(table.source, quoted, (code, home), raw.values[:, n, m])
-                if currency:
-                    place = (currency, tenor.canonical)
-                    found[place] = _joined(table.source, found.get(place), log_price, f"{code} {tenor}")
-    codes = sorted({code for code, _ in found})
-    names = sorted({name for _, name in found}, key=_order)
-    values = np.full((len(calendar), len(codes), len(names)), np.nan)
-    for (code, name), column in found.items():
-        values[:, codes.index(code), names.index(name)] = column
-    return Curves(tuple(codes), tuple(parse_tenor(name) for name in names), values)
-
-
-def _raw_curves(table: Table, calendar: Calendar, key: str) -> Curves:
-    codes = sorted(_codes(table, key))
-    names = sorted(_codes(table, "tenor"), key=_order)
-    values = np.full((len(calendar), len(codes), len(names)), np.nan)
-    frame = table.frame
-    rows = calendar.locate(frame["ordinal"].to_numpy())
-    points = table.source.quote == "points" and "bid" in frame.columns
-    middle = (frame["bid"] + frame["ask"]).to_numpy() / 2 if points else _mid(frame)
-    _put(table, values, (rows, _places(frame, key, codes), _places(frame, "tenor", names)), middle)
-    return Curves(tuple(codes), tuple(parse_tenor(name) for name in names), values)
-
-
-def _quote_key(table: Table) -> str:
-    return "pair" if table.source.quote == "pair" else "currency"
-
-
-def _outright(
-    source: Source, spot: Sequence[tuple[Source, Panel]], codes: tuple[str, str], raw: Floats
-) -> tuple[Floats, str]:
-    """Log home price and currency of one forward series; no currency for a cross."""
-    code, home = codes
-    if source.quote != "points":
-        base, quote = _pair(source, code, home)
-        price = raw
-    else:
-        (base, quote), price = _on_spot(source, spot, codes, raw)
-    if home not in (base, quote) or base == quote:
-        return raw, ""
-    currency, sign = _foreign(base, quote, home)
-    return sign * np.log(price), currency
-
-
-def _on_spot(
-    source: Source, spot: Sequence[tuple[Source, Panel]], codes: tuple[str, str], points: Floats
-) -> tuple[tuple[str, str], Floats]:
-    """The pair of a series of points, and the outright price: the middle of spot plus points over scale."""
-    code, home = codes
-    (scale,) = by_code(source.scale, [_scaled_code(source, code, home)], source, "scale")
-    for declared, panel in spot:
-        for name in panel.codes:
-            pair = _pair(declared, name, home)
-            if set(pair) == {code, home} if len(code) == 3 else pair == split_pair(source, code):
-                price = panel.column(name) + points / float(scale)  # type: ignore[arg-type]
-                if (price <= 0).any():
-                    raise DataError(
-                        f"{source.file}: {code}: points of {points[price <= 0][0]:g} with scale {scale} leave no "
-                        "forward price above zero; check scale and the direction of the points"
-                    )
-                return pair, price
-    raise DataError(
-        f"{source.file}: points for {code!r} have no spot rate to stand on; give its spot in the same direction"
-    )
-
-
-def _scaled_code(source: Source, code: str, home: str) -> str:
-    """The code under which `scale` names a series: the pair itself or its foreign currency."""
-    if code in source.scale or len(code) == 3:
-        return code
-    base, quote = split_pair(source, code)
-    return base if quote == home else quote

@@ -15,7 +15,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from carrylab.data.calendar import Floats, Tenor, Window, horizon_years, lead, window
-from carrylab.data.panel import Curves, Panel, curves, forward_quotes, spot_quotes
+from carrylab.data.panel import Curves, Panel, curves
+from carrylab.data.quotes import forward_quotes, spot_quotes
 from carrylab.data.read import MarketData
 from carrylab.errors import DataError
 from carrylab.markets.parity import Entity, Leg, Parity

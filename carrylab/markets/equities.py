@@ -55,7 +55,7 @@ def dividend_price(data: MarketData, world: Equities, entities: tuple[Entity, ..
     years = horizon.months // 12
     bound = APPROXIMATION_BOUND if data.market.tolerance is None else data.market.tolerance
     dp = np.log(world.dividend) - np.log(world.price)
-    rho = _rho(data.market, dp)
+    rho = _rho(data.market, entities, dp)
     riskless, riskless_name, rate_notes = _riskless_year(data, world)
     parts = [_year(data, world, (dp, rho), riskless, j) for j in range(years)]
     sums = {name: np.sum([rho**j * part[name] for j, part in enumerate(parts)], axis=0) for name in parts[0]}
@@ -85,10 +85,12 @@ def dividend_price(data: MarketData, world: Equities, entities: tuple[Entity, ..
     )
 
 
-def _rho(market: Market, dp: Floats) -> float:
-    """The study's rho, or 1 / (1 + e^{mean dp}) of the market."""
+def _rho(market: Market, entities: tuple[Entity, ...], dp: Floats) -> float:
+    """The study's rho, or 1 / (1 + e^{mean dp}) of the market's indices that are not left out."""
     if market.rho is not None:
         return market.rho
+    out = set(market.leave_out)
+    dp = dp[:, [not out & {one.name, one.economy, one.currency, one.index} for one in entities]]
     if not np.isfinite(dp).any():
         raise DataError(
             f"market {market.name!r}: on no date do a price and a dividend above zero stand together; check that "

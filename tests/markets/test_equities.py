@@ -89,6 +89,21 @@ def test_rho_of_the_sample() -> None:
     assert parity.notes[0] == f"rho = {parity.rho:.4f}, from the sample mean"
 
 
+def test_an_index_left_out_is_left_out_of_rho() -> None:
+    def two(role, values, other, **declared):
+        return table(role, "economy", {("EA",): values, ("EH",): other}, interval="year", **declared)
+
+    tables = (
+        two("prices", [100.0, 110.0, 121.0], [1.0, 1.0, 1.0]),
+        two("dividends", [4.0, 5.0, 5.5], [1.0, 1.0, 1.0], basis="trailing 12 months"),
+        bills({("AAA", "12m"): [0.03] * 3, ("HHH", "12m"): [0.03] * 3}),
+    )
+    options = {"interval": "year", "horizons": "12m", "leave_out": ("HHH",)}
+    both = one(market("equities", "dividend-price", *tables, **options), ECONOMIES)
+    alone = one(yearly("dividend-price"), ECONOMIES)
+    assert both.rho == pytest.approx(alone.rho, abs=1e-15)
+
+
 def test_carry_by_hand() -> None:
     parity = one(yearly("carry"), ECONOMIES)
     assert row(parity) == pytest.approx(

@@ -10,7 +10,8 @@ import numpy as np
 
 from carrylab.data.calendar import Floats, Tenor
 from carrylab.data.checks.finding import Check, Dense, Level, runs
-from carrylab.data.panel import Curves, Panel, curves, forward_quotes, split_pair, spot_quotes
+from carrylab.data.panel import Curves, Panel, curves
+from carrylab.data.quotes import forward_quotes, split_pair, spot_quotes
 from carrylab.data.read import MarketData
 from carrylab.errors import DataError
 
@@ -64,8 +65,14 @@ class Covered:
 
 
 def parity_slope(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
-    """P1: regress (s - f) a year on i* - i in log rates, for each currency and length; all three numbers are judged."""
-    found = covered(data)
+    """P1: regress (s - f) a year on i* - i in log rates, for each currency and length; all three numbers are judged.
+
+    Forwards of a currency declared offshore imply another rate than the deposits, so theirs is only a warning.
+    """
+    offshore = set(data.market.offshore)
+    everything = covered(data)
+    yield from _failures(tables, [one for one in everything if one.currency in offshore and not one.holds()], "warning")
+    found = [one for one in everything if one.currency not in offshore]
     wrong = [one for one in found if not one.holds()]
     currencies = {one.currency for one in found}
     everywhere = len(currencies) > 1 and {one.currency for one in wrong} == currencies
@@ -75,12 +82,16 @@ def parity_slope(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
         if dense is not None:
             yield dense.whole(("P1", "error"), _said(worst, f"in all {len(currencies)} currencies: "))
         return
+    yield from _failures(tables, wrong, "error")
+
+
+def _failures(tables: Sequence[Dense], wrong: Sequence[Covered], level: Level) -> Iterator[Check]:
     for one in wrong:
         forwards = one.slope > 1.5
         dense = _file_of(tables, "forwards" if forwards else "deposits", one.currency)
         if dense is not None:
             at = _series_of(dense, one)
-            finding = dense.found(("P1", "error"), at, _span(dense, at), _said(one, ""))
+            finding = dense.found(("P1", level), at, _span(dense, at), _said(one, ""))
             yield replace(finding, series=dense.codes[at])
 
 
@@ -201,7 +212,9 @@ def points(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
         (code, tenor)
         for n, code in enumerate(forwards.codes)
         for m, tenor in enumerate(forwards.tenors)
-        if np.isfinite(premia[:, n, m]).any() and np.nanmedian(premia[:, n, m]) > LARGE_PREMIUM
+        if code not in data.market.offshore
+        and np.isfinite(premia[:, n, m]).any()
+        and np.nanmedian(premia[:, n, m]) > LARGE_PREMIUM
     ]
     advice = "check scale, and whether these are points or outright prices"
     for one in tables:
