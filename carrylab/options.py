@@ -145,6 +145,7 @@ class Market:
     currency: EquityCurrency = "local"
     max_gap: int | None = None
     pegs: tuple[str, ...] = ()
+    offshore: tuple[str, ...] = ()
     leave_out: tuple[str, ...] = ()
     index_economy: Mapping[str, str] = field(default_factory=dict)
 

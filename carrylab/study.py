@@ -62,7 +62,11 @@ KIND_KEYS: dict[str, dict[str, Reader]] = {
         "missing_maturity": choice(get_args(options.MissingMaturity)),
         "short": tenor,
     },
-    "currencies": {"missing_tenor": choice(get_args(options.MissingTenor)), "pegs": several(text)},
+    "currencies": {
+        "missing_tenor": choice(get_args(options.MissingTenor)),
+        "pegs": several(text),
+        "offshore": several(text),
+    },
     "equities": {
         "rho": rho,
         "currency": choice(get_args(options.EquityCurrency)),
