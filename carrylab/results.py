@@ -39,8 +39,8 @@ class Results:
         found = side_by_side(self.findings, parity=parity)
         if found is None:
             return pd.DataFrame()
-        rows = [[cell.text.strip() for cell in line.cells] or [""] * len(found.head) for line in found.lines]
-        return pd.DataFrame(rows, columns=list(found.head), index=[line.label for line in found.lines])
+        rows = [[cell.text.strip() for cell in line.cells] or [""] * len(found.head) for line in found.filled()]
+        return pd.DataFrame(rows, columns=list(found.head), index=[line.label for line in found.filled()])
 
     def report(self, width: int = 100) -> str:
         """The whole report as plain text, `width` columns wide."""

@@ -35,6 +35,10 @@ class Table:
     notes: tuple[str, ...] = ()
     corner: str = ""
 
+    def filled(self) -> tuple[Line, ...]:
+        """The lines that say something: headings, and lines with more than dashes in them."""
+        return tuple(line for line in self.lines if line.heading or any(cell.text.strip(" -") for cell in line.cells))
+
     def columns(self, chosen: slice) -> Table:
         """The same table with some of its columns."""
         lines = tuple(Line(line.label, line.cells[chosen], line.heading) for line in self.lines)

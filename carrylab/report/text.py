@@ -88,12 +88,11 @@ def _head(table: Table, at: int) -> list[str]:
 
 def _block(table: Table) -> str:
     """Head and body between rules, set by tabulate."""
-    lines = [line for line in table.lines if line.heading or any(cell.text.strip(" -") for cell in line.cells)]
     heads = [_head(table, at) for at in range(len(table.head))]
     deep = max(len(parts) for parts in heads)
     padded = [[""] * (deep - len(parts)) + parts for parts in heads]
     rows = [[table.corner if at == deep - 1 else "", *(parts[at] for parts in padded)] for at in range(deep)]
-    rows += [[_label(line), *(cell.text for cell in line.cells)] for line in lines]
+    rows += [[_label(line), *(cell.text for cell in line.cells)] for line in table.filled()]
     text = tabulate(
         [row + [""] * (1 + len(table.head) - len(row)) for row in rows],
         tablefmt="plain",
