@@ -175,8 +175,10 @@ def carry(data: MarketData, world: Equities, entities: tuple[Entity, ...], horiz
     dividend, paid = h * world.dividend, h * lead(world.dividend, at)
     income, income_later = np.log1p(dividend / world.price), np.log1p(paid / later)
     sure, open_gain = np.zeros_like(rate), _over(data, world.money, horizon, at)
+    hedge_notes: tuple[str, ...] = ()
     if world.quoted is not None and data.market.currency == "home hedged":
-        sure, open_gain = hedge(data, world.quoted, world.own, horizon), np.zeros_like(rate)
+        sure, hedge_notes = hedge(data, world.quoted, world.own, horizon)
+        open_gain, hedge_notes = np.zeros_like(rate), (f"carry is hedged over {horizon} at once", *hedge_notes)
     excess = np.log((later + paid) / world.price) + sure + open_gain - h * rate
     steps, step_notes = _one_period(data, world)
     return Parity(
@@ -196,6 +198,7 @@ def carry(data: MarketData, world: Equities, entities: tuple[Entity, ...], horiz
         notes=(
             *world.notes,
             *rate_notes,
+            *hedge_notes,
             *step_notes,
             f"dividends over {horizon} are {h:g} years of the trailing twelve months'",
         ),

@@ -44,7 +44,7 @@ def read_equities(data: MarketData, economies: Mapping[str, str]) -> Equities:
     prices = levels(data.tables["prices"], data.calendar, key)
     own = tuple(_currency(data.market, economies, code) for code in prices.codes)
     quoted = None if data.market.currency == "local" else _exchange_rates(data)
-    money = np.zeros_like(prices.values) if quoted is None else _money(data, quoted, own)
+    money, money_notes = (np.zeros_like(prices.values), ()) if quoted is None else _money(data, quoted, own)
     dividend, dividend_notes = _dividends(data, prices, key)
     total, total_notes = _total(data, prices, key)
     return Equities(
@@ -56,7 +56,7 @@ def read_equities(data: MarketData, economies: Mapping[str, str]) -> Equities:
         money=money,
         rates=_rates(data, prices.codes, own),
         quoted=quoted,
-        notes=(*dividend_notes, *total_notes, *_money_notes(data.market)),
+        notes=(*dividend_notes, *total_notes, *money_notes),
     )
 
 
@@ -150,17 +150,19 @@ def _exchange_rates(data: MarketData) -> Currencies:
     return read_currencies(data)
 
 
-def _money(data: MarketData, quoted: Currencies, own: tuple[str, ...]) -> Floats:
-    """Log gain of each period (T, N) on the money of an index: its appreciation, or with a hedge its discount."""
+def _money(data: MarketData, quoted: Currencies, own: tuple[str, ...]) -> tuple[Floats, tuple[str, ...]]:
+    """Log gain of each period (T, N) on the money of an index, its appreciation or with a hedge its discount; notes."""
     if data.market.currency == "home unhedged":
-        return _of_index(data, quoted, own, quoted.spot - before(quoted.spot))
-    return before(hedge(data, quoted, own, STEP_TENORS[data.calendar.interval]))
+        gains = _of_index(data, quoted, own, quoted.spot - before(quoted.spot))
+        return gains, ("returns in home currency, unhedged, over the home bill rate",)
+    discount, notes = hedge(data, quoted, own, STEP_TENORS[data.calendar.interval])
+    return before(discount), ("returns in home currency, hedged period by period, over the home bill rate", *notes)
 
 
-def hedge(data: MarketData, quoted: Currencies, own: tuple[str, ...], length: Tenor) -> Floats:
-    """Log gain f - s (T, N), known today, of selling the money of each index forward."""
-    forward, _ = forward_price(data, quoted, length, by_rates=quoted.forwards is None)
-    return _of_index(data, quoted, own, forward - quoted.spot)
+def hedge(data: MarketData, quoted: Currencies, own: tuple[str, ...], length: Tenor) -> tuple[Floats, tuple[str, ...]]:
+    """Log gain f - s (T, N), known today, of selling the money of each index forward; and notes on the lengths used."""
+    forward, notes = forward_price(data, quoted, length, by_rates=quoted.forwards is None)
+    return _of_index(data, quoted, own, forward - quoted.spot), notes
 
 
 def _of_index(data: MarketData, quoted: Currencies, own: tuple[str, ...], gains: Floats) -> Floats:
@@ -171,15 +173,6 @@ def _of_index(data: MarketData, quoted: Currencies, own: tuple[str, ...], gains:
         known = ", ".join(quoted.codes)
         raise DataError(f"market {data.market.name!r}: no spot rate of {missing[0]!r} against {home}; found {known}")
     return np.stack([np.zeros(len(gains)) if code == home else panel.column(code) for code in own], axis=1)
-
-
-def _money_notes(market: Market) -> tuple[str, ...]:
-    words = {
-        "local": (),
-        "home unhedged": ("returns in home currency, unhedged, over the home bill rate",),
-        "home hedged": ("returns in home currency, hedged period by period, over the home bill rate",),
-    }
-    return words[market.currency]
 
 
 def periods_in(data: MarketData, length: Tenor) -> int:

@@ -264,6 +264,14 @@ def test_a_hedge_from_rates_where_no_forwards_are_quoted() -> None:
     assert parity.signal[0, 0] == pytest.approx(math.log(1.04) + 0.02 - 0.05, abs=1e-15)
 
 
+def test_a_forward_that_stands_in_for_a_longer_hedge_is_noted() -> None:
+    options = {"currency": "home hedged", "horizons": "24m", "missing_tenor": "nearest"}
+    parity = one(yearly("carry", SPOT, FORWARD, **options), ECONOMIES)
+    # Twice the discount of a year.
+    assert parity.signal[0, 0] == pytest.approx(math.log(1.08) + 2 * DISCOUNT - 2 * 0.05, abs=1e-14)
+    assert {"carry is hedged over 24m at once", "forwards of 12m stand in for 24m"} <= set(parity.notes)
+
+
 def test_the_home_index_has_no_gain_on_money() -> None:
     tables = [
         table(role, "economy", {("EH",): values, ("EA",): values}, interval="year", **declared)
