@@ -17,6 +17,7 @@ from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
+from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
 from carrylab.evidence.setting import Fit, Row, errors_of
 from carrylab.evidence.shares import share_rows
@@ -194,6 +195,7 @@ def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
         found = list(_fits(parity, sample, built.market))
         said = (AVERAGED,) if is_averaged(built.data) else ()
         rows += [row for one in found for row in (*share_rows(one), *summary_rows(one, said))]
+        rows += group_rows(found[1:])
         rows += regression_ledger_rows(found[0])
         rows += latest_rows(found[0], terms)
         rows += _other_rho(parity, built, economies)

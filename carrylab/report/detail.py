@@ -8,7 +8,7 @@ from typing import Any
 
 import pandas as pd
 
-from carrylab.report.numbers import digits_of, fixed, in_brackets
+from carrylab.report.numbers import digits_of, fixed, in_brackets, p_value
 from carrylab.report.table import (
     Cell,
     Line,
@@ -29,12 +29,14 @@ SHOWN_CHECKS = ("error", "warning")
 def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
     """One table a market, parity and horizon."""
     shares = findings[findings["section"] == "shares"]
+    joint = findings[(findings["section"] == "joint") & (findings["group"] == "all groups")]
     for key, rows in shares.groupby(["market", "parity", "horizon"], sort=False):
         market, parity, horizon = (str(part) for part in key)
-        yield _detail(f"{market}: {parity}, {horizon}", rows)
+        own = (joint["market"] == market) & (joint["parity"] == parity) & (joint["horizon"] == horizon)
+        yield _detail(f"{market}: {parity}, {horizon}", rows, joint[own])
 
 
-def _detail(title: str, rows: pd.DataFrame) -> Table:
+def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:
     headline = rows[(rows["rank"] == "headline") & (rows["sample"] == "all")]
     own_p = not (headline["term"] == "nothing paid").any()
     head: list[str] = []
@@ -53,7 +55,7 @@ def _detail(title: str, rows: pd.DataFrame) -> Table:
         title=title,
         head=(*head, "obs.", "from", "to"),
         lines=tuple(lines),
-        notes=(*_detail_notes(headline), *_resolved_note(rows)),
+        notes=(*_detail_notes(headline), *_resolved_note(rows), *_joint_notes(joint)),
         corner="slopes",
     )
 
@@ -115,6 +117,16 @@ def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
         listed = ", ".join(f"{row['leg']} {row['weight']:+.4g}" for row in weights.to_dict("records"))
         said.append(f"Weights in the identity: {listed}.")
     return tuple(said)
+
+
+def _joint_notes(joint: pd.DataFrame) -> list[str]:
+    """One line a joint hypothesis on the groups: its p, law and what was redundant, or why there is none."""
+    said = []
+    for row in joint.to_dict("records"):
+        result = row["note"] if math.isnan(row["p_value"]) else f"p {p_value(row['p_value'])}, {row['method']}"
+        more = f"; {row['note']}" if row["note"] and not math.isnan(row["p_value"]) else ""
+        said.append(f"{str(row['term']).capitalize()} in all groups: {result}{more}.")
+    return said
 
 
 def _resolved_note(rows: pd.DataFrame) -> tuple[str, ...]:

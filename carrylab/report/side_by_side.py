@@ -242,7 +242,8 @@ def comparison_table(findings: pd.DataFrame, parity: str | None = None) -> Table
     """Differences of the resolved premium shares with intervals, then the joint p; None where nothing compares."""
     columns = columns_of(findings, parity)
     horizons = {column.horizon for column in columns}
-    joint = findings[(findings["section"] == "joint") & (findings["parity"] == (parity or "each market's own spread"))]
+    joint = findings[(findings["section"] == "joint") & (findings["group"] == "pooled")]
+    joint = joint[joint["parity"] == (parity or "each market's own spread")]
     joint = joint[joint["horizon"].isin(horizons)]
     if len(horizons) > 1 or joint.empty:
         return None
