@@ -185,7 +185,7 @@ def test_markets_of_one_horizon_are_compared(tmp_path: Path) -> None:
     short = yields[yields["maturity"] == "1y"].assign(maturity="3m")
     path = worlds.write(tmp_path, study, yields=pd.concat([yields, short]), **worlds.currencies())
     found = findings_of(path)
-    joint = found[found["section"] == "joint"]
+    joint = found[(found["section"] == "joint") & (found["group"] == "pooled")]
     assert "Bonds less FX" in set(joint["term"])
     slopes = found[(found["term"] == "resolved premium share") & (found["group"] == "pooled")].set_index("market")
     expected = slopes.at["Bonds", "estimate"] - slopes.at["FX", "estimate"]

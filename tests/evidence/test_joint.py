@@ -13,16 +13,16 @@ from scipy import stats
 import carrylab
 
 
-def joint(folder: Path, study: str, files: dict[str, pd.DataFrame]) -> tuple[pd.DataFrame, pd.DataFrame]:
+def joint(folder: Path, study: str, files: dict[str, pd.DataFrame]) -> pd.DataFrame:
     found = carrylab.run(carrylab.read_study(worlds.write(folder, study, **files))).findings
     rows = found[(found["section"] == "joint") & (found["group"] == "all groups")]
-    return found, rows.set_index("term")
+    return rows.set_index("term")
 
 
 def test_no_premium_in_one_step_returns_is_the_white_wald_test(tmp_path: Path) -> None:
     # With one step and one entity a group, 1B is White's covariance at the null: scores x~ (y - mean y).
     study = worlds.CURRENCIES.replace('["3m"]', '["1m"]').replace('tenor = "3m"', 'tenor = "1m"')
-    found, rows = joint(tmp_path, study, worlds.currencies())
+    rows = joint(tmp_path, study, worlds.currencies())
     path = tmp_path / "out"
     carrylab.run(carrylab.read_study(tmp_path / "study.toml")).save(path)
     panel = pd.read_csv(path / "panel.csv").dropna()
@@ -40,7 +40,7 @@ def test_no_premium_in_one_step_returns_is_the_white_wald_test(tmp_path: Path) -
 
 
 def test_equality_of_two_groups_is_their_difference(tmp_path: Path) -> None:
-    _, rows = joint(tmp_path, worlds.BONDS, worlds.bonds())
+    rows = joint(tmp_path, worlds.BONDS, worlds.bonds())
     equal = rows.loc["all premium shares equal"].iloc[0]
     assert equal["method"].startswith("F(1, ")
     assert 0 < equal["p_value"] < 1
@@ -49,7 +49,7 @@ def test_equality_of_two_groups_is_their_difference(tmp_path: Path) -> None:
 def test_more_restrictions_than_the_sample_carries_are_refused_in_words(tmp_path: Path) -> None:
     codes = ("BBB", "CCC", "DDD", "EEE", "FFF", "GGG")
     study = worlds.CURRENCIES.replace('["3m"]', '["12m"]').replace('tenor = "3m"', 'tenor = "12m"')
-    _, rows = joint(tmp_path, study, worlds.currencies(codes=codes))
+    rows = joint(tmp_path, study, worlds.currencies(codes=codes))
     equal = rows.loc["all premium shares equal"]
     assert np.isnan(equal["p_value"])
     assert "restrictions exceed the" in equal["note"]
