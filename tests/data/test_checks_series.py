@@ -102,7 +102,10 @@ def test_a_declared_peg_may_stand_still(tmp_path: Path) -> None:
 def test_a_declared_average_is_no_surprise(tmp_path: Path) -> None:
     files = changed(market(), averaged)
     declared = STUDY.replace('quote = "home per foreign"', 'quote = "home per foreign", timing = "average"')
-    assert "D5" not in {one.id for one in seen(tmp_path, files, declared)}
+    found = seen(tmp_path, files, declared)
+    assert ("D5", "CCC") not in {(one.id, one.series) for one in found}
+    # The others are month ends: the .25 of an average is not in their changes.
+    assert {one.level for one in found if one.id == "D5"} == {"note"}
 
 
 def test_a_move_all_make_is_no_splice(tmp_path: Path) -> None:

@@ -8,14 +8,16 @@ from types import MappingProxyType
 from carrylab.data.checks.currencies import CURRENCIES
 from carrylab.data.checks.equities import EQUITIES
 from carrylab.data.checks.finding import Check, Dense, dense_tables
+from carrylab.data.checks.jumps import JUMPS
 from carrylab.data.checks.rates import RATES
 from carrylab.data.checks.series import SERIES
+from carrylab.data.checks.timing import TIMING
 from carrylab.data.read import MarketData
 
 __all__ = ["REGISTRY", "Check", "check_market"]
 
 REGISTRY: Mapping[str, Callable[[MarketData, Sequence[Dense]], Iterable[Check]]] = MappingProxyType(
-    {**RATES, **CURRENCIES, **SERIES, **EQUITIES}
+    {**RATES, **CURRENCIES, **SERIES, **TIMING, **JUMPS, **EQUITIES}
 )
 
 

@@ -83,6 +83,11 @@ class Dense:
         first, last = self.label(int(stands[0])), self.label(int(stands[-1]))
         return Check(check[0], check[1], self.file, "", first, last, said[0], said[1])
 
+    def span(self, at: int) -> slice:
+        """Rows from the first to the last value of one series."""
+        here = np.flatnonzero(np.isfinite(self.values[:, at]))
+        return slice(int(here[0]), int(here[-1]) + 1)
+
     def label(self, row: int) -> str:
         """Name of a period."""
         return self.calendar.label(row)

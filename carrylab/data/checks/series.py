@@ -1,25 +1,16 @@
-"""Checks on every series: keys, gaps, stale values, alignment, averages, splices, new money, extremes, survivors."""
+"""Checks on every series: repeated keys, gaps, stale values, survivors; and on what the study declares about time."""
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterator, Sequence
 
 import numpy as np
 
-from carrylab.data.calendar import Floats, steps_in, window
-from carrylab.data.checks.finding import Check, Dense, Level, mad, merged, runs
+from carrylab.data.calendar import steps_in, window
+from carrylab.data.checks.finding import Check, Dense, Level, merged, runs
+from carrylab.data.checks.limits import LONG_GAP, STALE
 from carrylab.data.read import MarketData
 
-LONG_GAP = 12  # periods; from here a gap is a warning
-STALE = {"day": 5, "week": 4, "month": 3, "quarter": 3, "year": 3}  # unchanged periods in a row
-MISALIGNED_DAYS = 5  # between the usual observation days of two series
-AVERAGE_AUTOCORRELATION = 0.15  # Working (1960): changes of averages have .25
-EXTREME = 8.0  # median absolute deviations
-ALONE = 30.0  # median absolute deviations, out and back
-SHIFT_PERIODS = 6  # a splice moves the level for at least so long
-QUIET = 3.0  # median absolute deviations within which peers count as quiet
-TEN = math.log(10.0)
 NO_LAGS = ("classical", "robust", "clustered: entity", "clustered: date", "clustered: both")
 
 
@@ -63,174 +54,6 @@ def stale(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
                 if run.stop - run.start >= STALE[data.calendar.interval]:
                     seen = f"price unchanged for {run.stop - run.start} periods"
                     yield one.found(("D3", "warning"), at, run, (seen, "check the source; declare a peg under pegs"))
-
-
-def alignment(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
-    """D4: series observed on other days of the period than the rest, or a period late or early."""
-    ages = [_ages(one) for one in tables]
-    known = np.concatenate([age[np.isfinite(age)] for age in ages]) if ages else np.empty(0)
-    usual = float(np.median(known)) if len(known) else 0.0
-    for one, age in zip(tables, ages, strict=True):
-        for at in np.flatnonzero(np.abs(age - usual) > MISALIGNED_DAYS):
-            seen = f"usually observed {age[at]:.0f} days before the period's end, other series {usual:.0f}"
-            rows = _span(one, int(at))
-            yield one.found(("D4", "warning"), int(at), rows, (seen, "take all series on the same days"))
-    yield from _shifted(tables)
-
-
-def _ages(one: Dense) -> Floats:
-    """Median days from observation to the period's end, series by series."""
-    left = (one.calendar.days[:, None] - one.days).astype(np.float64)
-    left[np.isnat(one.days)] = np.nan
-    return np.array([np.nanmedian(column) if np.isfinite(column).any() else np.nan for column in left.T])
-
-
-def _span(one: Dense, at: int) -> slice:
-    here = np.flatnonzero(np.isfinite(one.values[:, at]))
-    return slice(int(here[0]), int(here[-1]) + 1)
-
-
-def _shifted(tables: Sequence[Dense]) -> Iterator[Check]:
-    """A price whose changes go with its peers' (or its own index') of the period before or after."""
-    prices = {one.role: one for one in tables if one.role in ("prices",)}
-    for one in tables:
-        if not one.is_price() or one.role == "forwards":
-            continue
-        changes = _oriented(one)
-        own = prices.get("prices") if one.role == "total_return" else None
-        for at, label in enumerate(one.labels):
-            if own is not None and label in own.labels:
-                peers = _oriented(own)[:, own.labels.index(label)]
-            elif len(one.labels) >= 4:
-                others = np.delete(changes, at, axis=1)
-                enough = np.isfinite(others).sum(axis=1) >= 3
-                peers = np.full(len(others), np.nan)
-                peers[enough] = np.nanmean(others[enough], axis=1)
-            else:
-                continue
-            late = _lag(changes[:, at], peers)
-            if late:
-                seen = f"changes go with those of its peers one period {'earlier' if late > 0 else 'later'}"
-                word = "late" if late > 0 else "early"
-                yield one.found(("D4", "warning"), at, _span(one, at), (seen, f"the dates look one period {word}"))
-
-
-def _oriented(one: Dense) -> Floats:
-    """Changes with the sign that makes most of them move with the first principal direction of the table."""
-    changes = one.changes()
-    filled = np.nan_to_num(changes - np.nanmean(np.where(np.isfinite(changes), changes, 0.0), axis=0))
-    scale = filled.std(axis=0)
-    leading = np.linalg.svd(filled / np.where(scale > 0, scale, 1.0), full_matrices=False)[2][0]
-    return changes * np.where(leading < 0, -1.0, 1.0)
-
-
-def _lag(own: Floats, peers: Floats) -> int:
-    """+1 or -1 where the correlation is clearly largest at that lag, else 0."""
-    n = int((np.isfinite(own) & np.isfinite(peers)).sum())
-    if n < 24:
-        return 0
-    # Sizes only: the sign of a series that is out of step with its peers cannot be told from them.
-    same, late, early = (
-        abs(_correlation(*pair)) for pair in ((own, peers), (own[1:], peers[:-1]), (own[:-1], peers[1:]))
-    )
-    margin = 3.0 / math.sqrt(n)
-    if late > max(same, early) + margin:
-        return 1
-    return -1 if early > max(same, late) + margin else 0
-
-
-def _correlation(a: Floats, b: Floats) -> float:
-    both = np.isfinite(a) & np.isfinite(b)
-    if both.sum() < 12 or a[both].std() == 0 or b[both].std() == 0:
-        return 0.0
-    return float(np.corrcoef(a[both], b[both])[0, 1])
-
-
-def averages(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
-    """D5: changes that follow on from the last ones, the mark of averages, in a price declared as end of period."""
-    for one in tables:
-        if not one.is_price() or one.table.source.timing == "average":
-            continue
-        for at, column in enumerate(one.changes().T):
-            n = int(np.isfinite(column).sum())
-            own = _correlation(column[1:], column[:-1])
-            if n >= 36 and own > max(AVERAGE_AUTOCORRELATION, 2.0 / math.sqrt(n)):
-                seen = f"changes have autocorrelation {own:.2f} (averages have about .25)"
-                advice = 'a monthly average? then declare timing = "average"'
-                yield one.found(("D5", "warning"), at, _span(one, at), (seen, advice))
-
-
-def breaks(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
-    """D6 splice, D7 new money, D8 extremes: changes far outside the usual, told apart by what follows and by peers."""
-    for one in tables:
-        if one.role in ("dividends", "forwards"):
-            continue
-        changes = one.changes()
-        scales = np.array([mad(column) for column in changes.T])
-        middles = np.array([np.nanmedian(c) if np.isfinite(c).any() else 0.0 for c in changes.T])
-        with np.errstate(invalid="ignore", divide="ignore"):
-            sizes = np.abs(changes - middles) / scales
-        for at in range(len(one.labels)):
-            large = np.flatnonzero(sizes[:, at] > EXTREME) if scales[at] > 0 else np.empty(0, dtype=np.int64)
-            if len(large):
-                yield from _told_apart(one, at, (changes, sizes), large, data.market.pegs)
-
-
-def _told_apart(
-    one: Dense, at: int, moves: tuple[Floats, Floats], large: np.typing.NDArray[np.int64], pegs: Sequence[str]
-) -> Iterator[Check]:
-    changes, sizes = moves
-    rest: list[int] = []
-    last = -2
-    for t in large:
-        rows = slice(int(t), int(t) + 1)
-        power = round(abs(changes[t, at]) / TEN)
-        if one.is_price() and power and abs(abs(changes[t, at]) - power * TEN) < 0.02 * power * TEN:
-            seen = f"the price jumps by a factor of about {10**power:,}"
-            advice = f"new money? divide the older values by {10**power:,}, or the newer ones"
-            yield one.found(("D7", "warning"), at, rows, (seen, advice))
-        elif one.is_price() and _lasts(one, at, int(t), changes[t, at]) and _peers_quiet(sizes, at, int(t)):
-            if not any(peg in one.labels[at] for peg in pegs):
-                seen = (
-                    f"one change of {changes[t, at]:+.0%} that lasts, {sizes[t, at]:.0f} times the usual, peers quiet"
-                )
-                yield one.found(("D6", "warning"), at, rows, (seen, "another source from here? splice by a ratio"))
-        elif not one.is_price() and _stands_alone(changes[:, at], sizes[:, at], int(t)):
-            seen = f"one value stands alone, {sizes[t, at]:.0f} MAD from the one before and back again"
-            advice = "a slip, or a crisis? it can make a slope on its own; nothing is deleted"
-            yield one.found(("D8", "warning"), at, rows, (seen, advice))
-            last = t
-        elif t != last + 1:
-            rest.append(int(t))
-            last = t
-    if rest:
-        rest.sort(key=lambda t: -sizes[t, at])
-        largest = ", ".join(f"{sizes[t, at]:.0f} in {one.label(t)}" for t in rest[:3])
-        seen = f"{len(rest)} changes beyond {EXTREME:.0f} MAD, the largest {largest}"
-        yield one.found(("D8", "note"), at, slice(rest[0], rest[0] + 1), (seen, "look at it; nothing is deleted"))
-
-
-def _stands_alone(changes: Floats, sizes: Floats, t: int) -> bool:
-    """A change far beyond the extreme that the next one mostly takes back."""
-    if not sizes[t] > ALONE or t + 1 >= len(changes):
-        return False
-    return bool(-changes[t + 1] / changes[t] > 0.5)
-
-
-def _lasts(one: Dense, at: int, t: int, jump: float) -> bool:
-    """Whether the level stays at least half the jump away for the periods after."""
-    levels = np.log(one.values[:, at])
-    before, after = levels[max(t - SHIFT_PERIODS, 0) : t], levels[t : t + SHIFT_PERIODS]
-    if np.isfinite(after).sum() < SHIFT_PERIODS or not np.isfinite(before).any():
-        return False
-    moved = (np.nanmin(after) if jump > 0 else np.nanmax(after)) - np.nanmean(before)
-    return bool(moved * np.sign(jump) > abs(jump) / 2)
-
-
-def _peers_quiet(sizes: Floats, at: int, t: int) -> bool:
-    others = np.delete(sizes[t], at)
-    known = others[np.isfinite(others)]
-    return not len(known) or bool(np.quantile(known, 0.75) < QUIET)
 
 
 def survivors(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
@@ -281,9 +104,6 @@ SERIES = {
     "D1": lambda data, tables: merged(keys(data, tables)),
     "D2": lambda data, tables: merged(gaps(data, tables)),
     "D3": stale,
-    "D4": alignment,
-    "D5": averages,
-    "D6-D8": lambda data, tables: merged(breaks(data, tables)),
     "S1": lambda data, tables: merged(survivors(data, tables)),
     "L1": look_ahead,
     "H1": overlap,
