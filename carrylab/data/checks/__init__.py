@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from types import MappingProxyType
 
+from carrylab.data.checks.covered import COVERED
 from carrylab.data.checks.currencies import CURRENCIES
 from carrylab.data.checks.equities import EQUITIES
 from carrylab.data.checks.finding import Check, Dense, dense_tables
@@ -12,12 +13,13 @@ from carrylab.data.checks.jumps import JUMPS
 from carrylab.data.checks.rates import RATES
 from carrylab.data.checks.series import SERIES
 from carrylab.data.checks.timing import TIMING
+from carrylab.data.checks.triangles import TRIANGLES
 from carrylab.data.read import MarketData
 
 __all__ = ["REGISTRY", "Check", "check_market"]
 
 REGISTRY: Mapping[str, Callable[[MarketData, Sequence[Dense]], Iterable[Check]]] = MappingProxyType(
-    {**RATES, **CURRENCIES, **SERIES, **TIMING, **JUMPS, **EQUITIES}
+    {**RATES, **COVERED, **TRIANGLES, **CURRENCIES, **SERIES, **TIMING, **JUMPS, **EQUITIES}
 )
 
 

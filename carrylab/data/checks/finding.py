@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -121,6 +121,24 @@ def dense(table: Table, calendar: Calendar) -> Dense:
         spread[rows, series] = ask - bid
     days[rows, series] = frame["date"].to_numpy().astype("datetime64[D]")
     return Dense(table, calendar, tuple(labels), tuple(mains), values, spread, days)
+
+
+def find_series(
+    tables: Sequence[Dense], role: str, currencies: tuple[str, str], length: str = ""
+) -> tuple[Dense, int] | None:
+    """The series of a currency in the files of one role: the pair with home and the length asked for come first."""
+    code, home = currencies
+    found = [
+        (home in label, label.endswith(length), one, at)
+        for one in tables
+        if one.role == role
+        for at, label in enumerate(one.labels)
+        if code in label
+    ]
+    if not found:
+        return None
+    *_, dense, at = max(found, key=lambda place: place[:2])
+    return dense, at
 
 
 def runs(flags: Bools) -> list[slice]:
