@@ -78,16 +78,10 @@ class Covered:
         if self.size > LARGE_PREMIUM:
             return LARGE
         apart = self.free_r2 > CLOSE_R2
-        if apart and abs(self.own - 1.0) > 0.5 and abs(self.home + 1.0) < 0.5:
-            return (
-                "deposits",
-                f"its own rate enters with {self.own:.2g} where 1 is right: 12 is a rate a month, 4 a quarter",
-            )
-        if apart and abs(self.home + 1.0) > 0.5 and abs(self.own - 1.0) < 0.5:
-            return (
-                "deposits",
-                f"the home rate enters with {-self.home:.2g} where 1 is right: 12 is a rate a month, 4 a quarter",
-            )
+        for whose, factor, other in (("its own", self.own, -self.home), ("the home", -self.home, self.own)):
+            if apart and abs(factor - 1.0) > 0.5 and abs(other - 1.0) < 0.5:
+                hint = "12 is a rate a month, 4 a quarter"
+                return "deposits", f"{whose} rate enters with {factor:.2g} where 1 is right: {hint}"
         if self.r2 < 0.5:
             return LOOSE
         if abs(self.slope - 1.0) < 0.5:

@@ -7,12 +7,9 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from carrylab.data.calendar import Floats
-from carrylab.data.checks.finding import Check, Dense
+from carrylab.data.checks.finding import Check, Dense, span_of
+from carrylab.data.checks.limits import NEGATIVE_SHARE, ROUNDING, YIELDS
 from carrylab.data.read import MarketData
-
-YIELDS = (0.001, 0.20)  # trailing dividend yields outside this are a matter of units
-ROUNDING = 1e-4  # of the price: indices are printed with so few digits
-NEGATIVE_SHARE = 0.02  # of periods in which the implied dividend is below zero
 
 
 def dividends(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
@@ -37,7 +34,7 @@ def _yield(one: Dense, at: int, price: Floats) -> Iterator[Check]:
     middle = float(np.median(known))
     if not YIELDS[0] < middle < YIELDS[1]:
         seen = f"median dividend yield {middle:.3%}, outside {YIELDS[0]:.1%} to {YIELDS[1]:.0%}"
-        yield one.found(("Q1", "warning"), at, _span(ratio), (seen, "check the unit and basis of the dividends"))
+        yield one.found(("Q1", "warning"), at, span_of(ratio), (seen, "check the unit and basis of the dividends"))
 
 
 def _implied(one: Dense, at: int, price: Floats) -> Iterator[Check]:
@@ -51,16 +48,11 @@ def _implied(one: Dense, at: int, price: Floats) -> Iterator[Check]:
     if ends[1] < ends[0]:
         seen = f"total return over price falls from {ends[0]:.3g} to {ends[1]:.3g}"
         advice = "price and total return may stand in each other's place"
-        yield one.found(("Q1", "warning"), at, _span(ratio), (seen, advice))
+        yield one.found(("Q1", "warning"), at, span_of(ratio), (seen, advice))
     elif (known < -ROUNDING).mean() > NEGATIVE_SHARE:
         seen = f"implied dividends are below zero in {(known < -ROUNDING).mean():.0%} of periods"
         advice = "other dates, or net against gross; check that both indices stand on the same days"
-        yield one.found(("Q1", "warning"), at, _span(ratio), (seen, advice))
-
-
-def _span(values: Floats) -> slice:
-    here = np.flatnonzero(np.isfinite(values))
-    return slice(int(here[0]), int(here[-1]) + 1)
+        yield one.found(("Q1", "warning"), at, span_of(ratio), (seen, advice))
 
 
 EQUITIES = {"Q1": dividends}

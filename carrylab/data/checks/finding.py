@@ -85,8 +85,7 @@ class Dense:
 
     def span(self, at: int) -> slice:
         """Rows from the first to the last value of one series."""
-        here = np.flatnonzero(np.isfinite(self.values[:, at]))
-        return slice(int(here[0]), int(here[-1]) + 1)
+        return span_of(self.values[:, at])
 
     def label(self, row: int) -> str:
         """Name of a period."""
@@ -94,8 +93,9 @@ class Dense:
 
 
 def dense_tables(data: MarketData) -> list[Dense]:
-    """Every table of a market in dense form; a panel of the user's own is left aside."""
-    return [dense(table, data.calendar) for role, tables in data.tables.items() if role != "panel" for table in tables]
+    """Every table of a market that holds a value, in dense form; a panel of the user's own is left aside."""
+    found = [dense(table, data.calendar) for role, tables in data.tables.items() if role != "panel" for table in tables]
+    return [one for one in found if one.labels]
 
 
 def dense(table: Table, calendar: Calendar) -> Dense:
@@ -120,7 +120,10 @@ def dense(table: Table, calendar: Calendar) -> Dense:
         values[rows, series] = (bid + ask) / 2
         spread[rows, series] = ask - bid
     days[rows, series] = frame["date"].to_numpy().astype("datetime64[D]")
-    return Dense(table, calendar, tuple(labels), tuple(mains), values, spread, days)
+    # A series of one-sided quotes has no middle, and so nothing to check.
+    stands = np.flatnonzero(np.isfinite(values).any(axis=0))
+    names, codes_of = (tuple(texts[at] for at in stands) for texts in (labels, mains))
+    return Dense(table, calendar, names, codes_of, values[:, stands], spread[:, stands], days[:, stands])
 
 
 def find_series(
@@ -156,6 +159,12 @@ def merged(checks: Iterable[Check]) -> Iterator[Check]:
     for (*_, code, _, _), own in groups.items():
         count = f" ({len(own)} series alike)" if len(own) > 1 else ""
         yield replace(own[0], series=code if len(own) > 1 else own[0].series, seen=own[0].seen + count)
+
+
+def span_of(values: Floats) -> slice:
+    """Rows from the first to the last value that stands."""
+    here = np.flatnonzero(np.isfinite(values))
+    return slice(int(here[0]), int(here[-1]) + 1)
 
 
 def mad(values: Floats) -> float:

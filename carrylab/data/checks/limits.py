@@ -25,7 +25,7 @@ PEG_SD, PEG_DIFFERENTIAL = 0.0104, 0.01  # yearly sd of changes (.3% a month), d
 
 # D2, D3: holes and stale values
 YEAR: dict[Interval, int] = {"day": 252, "week": 52, "month": 12, "quarter": 4, "year": 1}  # periods
-LONG_GAP = 12  # periods; from here a gap is a warning
+LONG_GAP: dict[Interval, int] = {"day": 252, "week": 52, "month": 12, "quarter": 4, "year": 2}  # then a warning
 STALE: dict[Interval, int] = {"day": 5, "week": 4, "month": 3, "quarter": 3, "year": 3}  # unchanged in a row
 
 # D4, D5: timing

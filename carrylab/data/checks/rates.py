@@ -7,42 +7,53 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from carrylab.data.calendar import Floats
-from carrylab.data.checks.finding import Check, Dense, Level
+from carrylab.data.checks.finding import Check, Dense
+from carrylab.data.checks.limits import HIGH_DECIMAL, IMPOSSIBLE_SHARE, LOW_PERCENT, LOW_POINTS, LOWEST_FORWARD, PRICES
 from carrylab.data.panel import Curves, curves
 from carrylab.data.read import MarketData
 from carrylab.errors import DataError
 
-HIGH_DECIMAL = 0.5  # a median rate above this is no decimal
-LOW_PERCENT = 0.5  # rates that never pass this are no percentages
-PRICES = (0.01, 1.5)  # implied prices of zero-coupon bonds outside this cannot be
-LOWEST_FORWARD = -0.05  # a year
-
 
 def units(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
-    """U1: rates whose size does not fit the declared unit; settled by the prices they imply."""
+    """U1: rates whose size does not fit the declared unit; an error where the prices they imply cannot be."""
     for one in tables:
         if one.role not in ("zero_yields", "deposits") or one.table.source.compounding == "discount factor":
             continue
-        unit, size = one.table.source.unit, np.abs(one.values[np.isfinite(one.values)])
+        size, unit = np.abs(one.values[np.isfinite(one.values)]), one.table.source.unit
         if not len(size):
             continue
-        if unit == "decimal" and np.median(size) > HIGH_DECIMAL:
-            level: Level = "error" if _impossible(data, one) else "warning"
-            seen = f"declared decimal, but the median rate is {np.median(size):.3g}"
-            yield one.whole(("U1", level), (seen, 'percent? then declare unit = "percent"'))
-        if unit == "percent" and size.max() < LOW_PERCENT:
-            seen = f"declared percent, but the largest rate is {size.max():.3g}"
-            yield one.whole(("U1", "warning"), (seen, 'decimals? then declare unit = "decimal"'))
+        share = _impossible(data, one)
+        advice = _other_unit(unit, size) or "check unit and compounding"
+        if share > IMPOSSIBLE_SHARE:
+            seen = f"declared {unit}, but the median rate is {np.median(size):.3g}: {share:.0%} of the implied prices"
+            seen += f" of zero-coupon bonds are outside {PRICES[0]:g} to {PRICES[1]:g}"
+            yield one.whole(("U1", "error"), (seen, advice))
+        elif _other_unit(unit, size):
+            seen = f"declared {unit}, but the median rate is {np.median(size):.3g} and the largest {size.max():.3g}"
+            yield one.whole(("U1", "warning"), (seen, advice))
 
 
-def _impossible(data: MarketData, one: Dense) -> bool:
-    """Whether the declared rates imply prices of zero-coupon bonds that cannot be."""
+def _other_unit(unit: str, size: Floats) -> str:
+    """The unit that rates of this size look like, as advice; empty where the declared one will do."""
+    if unit == "decimal" and np.median(size) > HIGH_DECIMAL:
+        return 'percent? then declare unit = "percent"'
+    if unit == "percent" and size.max() < LOW_PERCENT:
+        return 'decimals? then declare unit = "decimal"'
+    if unit == "percent" and np.median(size) > 100.0 * HIGH_DECIMAL:
+        return 'basis points? then declare unit = "basis points"'
+    if unit == "basis points" and size.max() < LOW_POINTS:
+        return 'percent? then declare unit = "percent"'
+    return ""
+
+
+def _impossible(data: MarketData, one: Dense) -> float:
+    """Share of the implied prices of zero-coupon bonds that cannot be; all where a rate leaves no growth factor."""
     found = _curves(data, one)
     if found is None:
-        return True
+        return 1.0
     prices = np.exp(-found.years * found.values)
     known = prices[np.isfinite(prices)]
-    return bool(((known < PRICES[0]) | (known > PRICES[1])).mean() > 0.01)
+    return float(((known < PRICES[0]) | (known > PRICES[1])).mean())
 
 
 def _curves(data: MarketData, one: Dense) -> Curves | None:

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from carrylab.data.calendar import steps_in, window
-from carrylab.data.checks.finding import Check, Dense, Level, merged, runs
+from carrylab.data.checks.finding import Bools, Check, Dense, Level, merged, runs
 from carrylab.data.checks.limits import LONG_GAP, STALE
 from carrylab.data.read import MarketData
 
@@ -35,14 +35,16 @@ def gaps(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
             if found:
                 longest = max(found, key=lambda run: run.stop - run.start)
                 rows = slice(here[0] + longest.start, here[0] + longest.stop)
-                seen = f"{int(inside.sum())} periods missing in {len(found)} gaps, the longest shown"
-                level: Level = "warning" if rows.stop - rows.start >= LONG_GAP else "note"
+                seen = f"{int(inside.sum())} periods missing" + (
+                    f" in {len(found)} gaps, the longest shown" if found[1:] else ""
+                )
+                level: Level = "warning" if rows.stop - rows.start >= LONG_GAP[one.calendar.interval] else "note"
                 yield one.found(("D2", level), at, rows, (seen, "outcomes that need them are missing; fill the source"))
 
 
 def stale(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
-    """D3: a price that does not move; silent for declared pegs."""
-    pegs = data.market.pegs
+    """D3: a price that does not move, one period sooner where its forwards do; silent for declared pegs."""
+    pegs, least = data.market.pegs, STALE[data.calendar.interval]
     for one in tables:
         if not one.is_price():
             continue
@@ -50,10 +52,25 @@ def stale(data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
         for at, label in enumerate(one.labels):
             if any(peg in label for peg in pegs):
                 continue
-            for run in runs(still[:, at]):
-                if run.stop - run.start >= STALE[data.calendar.interval]:
-                    seen = f"price unchanged for {run.stop - run.start} periods"
-                    yield one.found(("D3", "warning"), at, run, (seen, "check the source; declare a peg under pegs"))
+            moving = _forward_moves(one, at, tables)
+            found = [run for run in runs(still[:, at]) if run.stop - run.start >= least - bool(moving[run].all())]
+            if found:
+                longest = max(found, key=lambda run: run.stop - run.start)
+                seen = f"price unchanged for {longest.stop - longest.start} periods"
+                seen += " while its forwards move" if moving[longest].all() else ""
+                advice = f"{len(found) - 1} more such runs; " if len(found) > 1 else ""
+                advice += "check the source; declare a peg under pegs"
+                yield one.found(("D3", "warning"), at, longest, (seen, advice))
+
+
+def _forward_moves(one: Dense, at: int, tables: Sequence[Dense]) -> Bools:
+    """Where an outright forward of the same name moves (T,); nowhere without one."""
+    moves = np.zeros(len(one.values), dtype=np.bool_)
+    for other in tables if one.role == "spot" else ():
+        if other.role == "forwards" and other.table.source.quote == one.table.source.quote:
+            own = [n for n, code in enumerate(other.codes) if code == one.labels[at]]
+            moves |= (np.nan_to_num(other.changes()[:, own]) != 0.0).any(axis=1)
+    return moves
 
 
 def survivors(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
@@ -62,17 +79,19 @@ def survivors(_data: MarketData, tables: Sequence[Dense]) -> Iterator[Check]:
         if one.role not in ("zero_yields", "spot", "prices"):
             continue
         stands = np.isfinite(one.values)
-        alive = stands[0] & stands[-1] if len(stands) else np.empty(0, dtype=bool)
-        share = f"{int(alive.sum())} of {len(one.labels)} series stand all through"
+        alive = {code for code, whole in zip(one.codes, stands[0] & stands[-1], strict=True) if whole}
+        share = f"{len(alive)} of {len(set(one.codes))} stand at both ends of the sample"
         for at in range(len(one.labels)):
-            here = np.flatnonzero(stands[:, at])
-            if len(here) and here[-1] < len(stands) - 2:
-                rows = slice(int(here[-1]), int(here[-1]) + 1)
-                advice = "default, merger or a change of provider? the last return is kept"
-                yield one.found(("S1", "warning"), at, rows, (f"ends before the others; {share}", advice))
-            if len(here) and here[0] > 1:
-                rows = slice(int(here[0]), int(here[0]) + 1)
-                yield one.found(("S1", "note"), at, rows, (f"begins after the others; {share}", "nothing to do"))
+            rows = one.span(at)
+            if rows.stop < len(stands) - 1:
+                said = (
+                    f"ends before the others; {share}",
+                    "default, merger or a change of provider? the last return is kept",
+                )
+                yield one.found(("S1", "warning"), at, slice(rows.stop - 1, rows.stop), said)
+            if rows.start > 1:
+                said = (f"begins after the others; {share}", "nothing to do")
+                yield one.found(("S1", "note"), at, slice(rows.start, rows.start + 1), said)
 
 
 def look_ahead(data: MarketData, _tables: Sequence[Dense]) -> Iterator[Check]:
