@@ -61,10 +61,14 @@ class Dense:
         """What the file holds."""
         return self.table.source.role
 
+    def logs(self) -> Floats:
+        """Logs (T, S) of prices; NaN for holes and what is not above zero, which reading an exchange rate refuses."""
+        return np.log(np.where(self.values > 0, self.values, np.nan))
+
     def changes(self) -> Floats:
         """Log changes (T, S) of a price, plain changes of anything else; NaN in the first row and beside holes."""
-        levels = np.log(np.where(self.values > 0, self.values, np.nan)) if self.is_price() else self.values
-        return np.vstack([np.full((1, levels.shape[1]), np.nan), np.diff(levels, axis=0)])
+        levels = self.logs() if self.is_price() else self.values
+        return np.diff(levels, axis=0, prepend=np.nan)
 
     def is_price(self) -> bool:
         """Whether the values are prices, which move in logs."""

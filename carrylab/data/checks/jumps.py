@@ -10,7 +10,7 @@ from typing import Literal
 import numpy as np
 
 from carrylab.data.calendar import Floats
-from carrylab.data.checks.finding import Check, Dense, mad, merged
+from carrylab.data.checks.finding import Check, Dense, mad, merged, span_of
 from carrylab.data.checks.limits import ALONE, EXTREME, NEIGHBOURS, NEW_MONEY_BAND, QUIET, SHIFT
 from carrylab.data.read import MarketData
 
@@ -95,7 +95,7 @@ def _stands_alone(changes: Floats, sizes: Floats, t: int) -> bool:
 def _lasts(one: Dense, where: tuple[int, int], jump: float, span: tuple[int, int]) -> bool:
     """Whether the level stays at least half the jump away for `span[0]` periods, `span[1]` of them observed."""
     at, t = where
-    levels = np.log(one.values[:, at])
+    levels = one.logs()[:, at]
     before, after = levels[max(t - span[0], 0) : t], levels[t : t + span[0]]
     if np.isfinite(after).sum() < span[1] or not np.isfinite(before).any():
         return False
@@ -160,17 +160,16 @@ def _joins(tables: Sequence[Dense]) -> Iterator[Check]:
 
 
 def _join(old: Dense, new: Dense, where: tuple[int, int]) -> Iterator[Check]:
-    last = np.flatnonzero(np.isfinite(old.values[:, where[0]]))
-    first = np.flatnonzero(np.isfinite(new.values[:, where[1]]))
-    if not len(last) or not len(first) or first[0] <= last[-1]:
+    before, after = old.logs()[:, where[0]], new.logs()[:, where[1]]
+    last, first = span_of(before).stop - 1, span_of(after).start
+    if first <= last:
         return
-    periods = int(first[0] - last[-1])
-    step = math.log(new.values[first[0], where[1]] / old.values[last[-1], where[0]])
-    usual = mad(np.concatenate([old.changes()[:, where[0]], new.changes()[:, where[1]]]))
-    if abs(step) > EXTREME * usual * math.sqrt(periods):
+    step = float(after[first] - before[last])
+    usual = mad(np.concatenate([np.diff(before), np.diff(after)])) * math.sqrt(first - last)
+    if abs(step) > EXTREME * usual:
         seen = f"a change of {step:+.0%} in logs where {new.file} takes over from {old.file}"
         advice = f"the older values times {math.exp(step):.4g} join it, if nothing else happened"
-        rows = slice(int(first[0]), int(first[0]) + 1)
+        rows = slice(first, first + 1)
         yield new.found(("D6", "warning"), where[1], rows, (seen, advice))
 
 

@@ -72,9 +72,8 @@ def _legs(tables: Sequence[Dense], home: str) -> dict[frozenset[str], Leg]:
         for at, label in enumerate(one.labels):
             base, quote = _currencies(one, label, home)
             if base != quote:
-                middle = one.values[:, at]
-                half = np.nan_to_num(one.spread[:, at] / middle / 2.0)
-                leg = Leg(one, at, base, quote, np.log(middle), half)
+                half = np.nan_to_num(one.spread[:, at] / one.values[:, at] / 2.0)
+                leg = Leg(one, at, base, quote, one.logs()[:, at], half)
                 found.setdefault(frozenset((base, quote)), leg)
     return found
 
