@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from concurrent.futures import ThreadPoolExecutor
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
-from typing import Literal
+from typing import Literal, Protocol
 
 import numpy as np
 
@@ -72,14 +71,27 @@ class Prepared:
     data: Measures
 
 
-def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resampled", workers: int = 1) -> Draws:
+class Spread(Protocol):
+    """How chunks go to workers: `map`, or the `map` of a pool of threads."""
+
+    def __call__(
+        self,
+        work: Callable[[np.random.Generator, int], Measures],
+        streams: Iterable[np.random.Generator],
+        counts: Iterable[int],
+        /,
+    ) -> Iterable[Measures]:
+        """Results in the order of the chunks."""
+
+
+def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resampled", spread: Spread = map) -> Draws:
     """Statistics on `count` draws in which nothing predicts, and on the data by the same formulas.
 
     Each draw: shocks (e, v) of one date for every entity of every case at once, drawn with replacement or, wild, in
     order with one random sign a date; x*_{t+1} = c + phi x*_t + v* from the actual first value; leg* = null x* +
     window sums of e*, on the rows the data have. Added predictors keep their data values. One-period outcomes that
     the data miss are missing in the draws' 1B errors too. All cases stand on one calendar.
-    Chunks of draws have a stream of random numbers each, so any number of workers gives the same bits.
+    Chunks of draws have a stream of random numbers each, so any number of workers behind `spread` gives the same bits.
     Source: Nelson and Kim (1993, JF 48:641); Goyal and Welch (2008, RFS 21:1455) for draws under the null.
     """
     dates = {len(case.question.sample.mask) for case in cases}
@@ -95,9 +107,7 @@ def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resa
         picks = picked(stream, (shape[0], size), shape[1], scheme)
         return joined([measured(one, picks) for one in prepared], axis=0)
 
-    with ThreadPoolExecutor(workers) as pool:
-        parts = list(pool.map(one_chunk, streams, counts))
-    drawn = joined(parts, axis=1)
+    drawn = joined(list(spread(one_chunk, streams, counts)), axis=1)
     return Draws(
         data=joined([one.data for one in prepared], axis=0),
         draws=Measures(drawn.slope.T, drawn.one_period.T, drawn.cosine.T, drawn.r2.T),
@@ -158,7 +168,7 @@ def measured(one: Prepared, picks: Picks) -> Measures:
     signal, outcome = simulate(one, picks)
     found = []
     for design in one.designs:
-        x, shocks = (values[:, design.columns] for values in (signal, outcome))
+        x, shocks = (np.take(values, design.columns, axis=1) for values in (signal, outcome))
         y = (design.ahead @ shocks.reshape(len(x), -1)).reshape(x.shape)
         if design.null:
             y += design.null * x

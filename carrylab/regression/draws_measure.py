@@ -104,7 +104,8 @@ def window_sums(steps: Ints, weights: Floats) -> csr_array:
 def measure(design: Design, x: Floats, y: Floats, one: Floats) -> Measures:
     """Slope, both t and R2 of every group (G, B) from draws (T, n, B) of signal, leg and one-period outcomes.
 
-    The inputs are overwritten. With x~, y~ after effects and controls are out (Frisch and Waugh 1933), Sxx = sum x~^2:
+    The inputs are in C order and overwritten. With x~, y~ after effects and controls are out (Frisch and Waugh 1933)
+    and Sxx = sum x~^2:
     b = sum x~ y~ / Sxx, t = (b - null) / error. 1B error: root of sum_tau (sum_i u W)^2 / Sxx with W the window sums
     of x~ and u the outcomes after the effects are out. Cosine error: root of n/nu sum_j Lam_j^2 / Sxx, Lam_j of the
     date scores sum_i x~ (y~ - b x~).
