@@ -1,0 +1,209 @@
+"""Draws under the null of no predictability, the same dates for every panel, so that any set of tests goes together."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, replace
+from typing import Literal, Protocol
+
+import numpy as np
+
+from carrylab.errors import InferenceError
+from carrylab.regression.draws_measure import Design, Measures, Question, designs, measure, one_step_of
+from carrylab.regression.draws_null import Null, dated_shocks, fit_null, pooled_shocks, shock_pool
+from carrylab.regression.sample import Floats, Ints, take
+
+Picks = Floats | Ints
+Scheme = Literal["resampled", "wild"]
+SCHEMES = {"resampled": "dates drawn with replacement", "wild": "dates in order, one random sign a date"}
+CHUNK = 1 << 20  # numbers in one array of a chunk of draws: eight megabytes
+FEWEST_DRAWS, MOST_DRAWS = 16, 500  # in one chunk
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Case:
+    """One panel and leg to draw, and the groups of its entities that are regressed, each a hypothesis of its own.
+
+    `signal` (T, N) with NaN for holes: the sample's signal on all dates, those included whose legs are still open.
+    `groups`: column numbers. `entities` (N,) are names for messages.
+    """
+
+    question: Question
+    signal: Floats
+    groups: tuple[Ints, ...]
+    entities: tuple[str, ...]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Draws:
+    """Statistics of H hypotheses, all groups of all cases in order, on the data (H,) and on B draws (B, H).
+
+    `nulls` (H,): slopes under the null. `fitted`: the null of each case, its entities those that have rows.
+    `scheme` and `seed` as used.
+    """
+
+    data: Measures
+    draws: Measures
+    nulls: Floats
+    fitted: tuple[Null, ...]
+    scheme: Scheme
+    seed: int
+
+    @property
+    def words(self) -> str:
+        """How the draws were made, a sentence fragment."""
+        return (
+            f"{len(self.draws.slope):,} draws under the null, {SCHEMES[self.scheme]}, the same for all entities and "
+            f"hypotheses, persistence estimated under the null, added predictors kept at their data, seed {self.seed}"
+        )
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Prepared:
+    """One case ready to draw. `shocks` (2, D, N): outcome's and signal's by row of the pool, or by calendar row.
+
+    `data`: the statistics (H,) of its own groups on the data.
+    """
+
+    null: Null
+    shocks: Floats
+    designs: tuple[Design, ...]
+    data: Measures
+
+
+class Spread(Protocol):
+    """How chunks go to workers: `map`, or the `map` of a pool of threads."""
+
+    def __call__(
+        self,
+        work: Callable[[np.random.Generator, int], Measures],
+        streams: Iterable[np.random.Generator],
+        counts: Iterable[int],
+        /,
+    ) -> Iterable[Measures]:
+        """Results in the order of the chunks."""
+
+
+def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resampled", spread: Spread = map) -> Draws:
+    """Statistics on `count` draws in which nothing predicts, and on the data by the same formulas.
+
+    Each draw: shocks (e, v) of one date for every entity of every case at once, drawn with replacement or, wild, in
+    order with one random sign a date; x*_{t+1} = c + phi x*_t + v* from the actual first value; leg* = null x* +
+    window sums of e*, on the rows the data have. Added predictors keep their data values. One-period outcomes that
+    the data miss are missing in the draws' 1B errors too. All cases stand on one calendar.
+    Chunks of draws have a stream of random numbers each, so any number of workers behind `spread` gives the same bits.
+    Source: Nelson and Kim (1993, JF 48:641); Goyal and Welch (2008, RFS 21:1455) for draws under the null.
+    """
+    dates = {len(case.question.sample.mask) for case in cases}
+    if len(dates) != 1:
+        raise InferenceError(f"draws taken together need one calendar, these have {sorted(dates)} dates; draw apart")
+    prepared = prepare(cases, scheme)
+    counts = chunks(count, max(case.question.sample.mask.size for case in cases))
+    streams = np.random.default_rng(seed).spawn(len(counts))
+    # A resampled row is drawn from the pool; a wild one has its own.
+    shape = (min(dates), prepared[0].shocks.shape[1])
+
+    def one_chunk(stream: np.random.Generator, size: int) -> Measures:
+        picks = picked(stream, (shape[0], size), shape[1], scheme)
+        return joined([measured(one, picks) for one in prepared], axis=0)
+
+    drawn = joined(list(spread(one_chunk, streams, counts)), axis=1)
+    return Draws(
+        data=joined([one.data for one in prepared], axis=0),
+        draws=Measures(drawn.slope.T, drawn.one_period.T, drawn.cosine.T, drawn.r2.T),
+        nulls=np.concatenate([np.full(len(case.groups), case.question.null) for case in cases]),
+        fitted=tuple(one.null for one in prepared),
+        scheme=scheme,
+        seed=seed,
+    )
+
+
+def prepare(cases: Sequence[Case], scheme: Scheme) -> tuple[Prepared, ...]:
+    """Fit the null of every case and lay out the shocks of all on the same dates."""
+    kept = [_with_rows(case) for case in cases]
+    nulls = [fit_null(case.signal, _outcomes(case), case.entities) for case in kept]
+    pool = shock_pool([null.pairs for null in nulls])
+    shocks = [pooled_shocks(null, pool) if scheme == "resampled" else dated_shocks(null) for null in nulls]
+    laid_out = [tuple(designs(case.question, case.groups)) for case in kept]
+    data = [joined([_on_data(case, one) for one in own], axis=0) for case, own in zip(kept, laid_out, strict=True)]
+    return tuple(Prepared(*parts) for parts in zip(nulls, shocks, laid_out, data, strict=True))
+
+
+def chunks(count: int, size: int) -> list[int]:
+    """How many draws each chunk makes, for arrays of `size` dates times entities a draw."""
+    chunk = min(max(CHUNK // size, FEWEST_DRAWS), MOST_DRAWS)
+    return [min(chunk, count - start) for start in range(0, count, chunk)]
+
+
+def picked(stream: np.random.Generator, shape: tuple[int, int], pool: int, scheme: Scheme) -> Picks:
+    """What a chunk draws (T, B): numbers of rows in the pool of `pool` dates, or a sign a date."""
+    if scheme == "wild":
+        return np.where(stream.integers(0, 2, shape) == 1, 1.0, -1.0)
+    return stream.integers(0, pool, shape)
+
+
+def simulate(one: Prepared, picks: Picks) -> tuple[Floats, Floats]:
+    """Signal and one-period outcomes (T, N, B) of a chunk; the signal before an entity's first date is no value."""
+    (T, B), N = picks.shape, one.shocks.shape[2]
+    outcome, signal = np.empty((T, N, B)), np.empty((T, N, B))
+    for drawn, table in zip((outcome, signal), one.shocks, strict=True):
+        if picks.dtype == np.float64:
+            np.multiply(table[:, :, None], picks[:, None], out=drawn)
+        else:
+            for i in range(N):
+                drawn[:, i] = np.ascontiguousarray(table[:, i])[picks]
+    null, begins = one.null, {int(row): np.flatnonzero(one.null.first == row) for row in np.unique(one.null.first)}
+    moved = np.empty((N, B))
+    for t in range(T):
+        if t:
+            signal[t] += np.multiply(null.persistence[:, None], signal[t - 1], out=moved)
+        if t in begins:
+            signal[t, begins[t]] = null.start[begins[t], None]
+    signal += null.mean[:, None]
+    return signal, outcome
+
+
+def measured(one: Prepared, picks: Picks) -> Measures:
+    """Statistics (H, B) of one case's groups on a chunk of draws."""
+    signal, outcome = simulate(one, picks)
+    found = []
+    for design in one.designs:
+        x, shocks = (np.take(values, design.columns, axis=1) for values in (signal, outcome))
+        y = (design.ahead @ shocks.reshape(len(x), -1)).reshape(x.shape)
+        if design.null:
+            y += design.null * x
+        found.append(measure(design, x, y, shocks))
+    return joined(found, axis=0)
+
+
+def joined(parts: Sequence[Measures], *, axis: int) -> Measures:
+    """Measures one after the other along an axis."""
+    return Measures(
+        *(
+            np.concatenate([getattr(part, name) for part in parts], axis=axis)
+            for name in ("slope", "one_period", "cosine", "r2")
+        )
+    )
+
+
+def _on_data(case: Case, design: Design) -> Measures:
+    """The statistics of one design's groups (H,) on the data themselves."""
+    question, own = case.question, design.columns
+    x, y = question.sample.x[:, own, :1].copy(), question.sample.y[:, own, question.leg, None].copy()
+    found = measure(design, x, y, np.nan_to_num(_outcomes(case)[:, own, None]))
+    return Measures(found.slope[:, 0], found.one_period[:, 0], found.cosine[:, 0], found.r2[:, 0])
+
+
+def _outcomes(case: Case) -> Floats:
+    return one_step_of(case.question.sample, case.question.leg).outcomes
+
+
+def _with_rows(case: Case) -> Case:
+    """The case without the entities that have no row in the regression."""
+    kept = np.flatnonzero(case.question.sample.mask.any(axis=0))
+    return Case(
+        replace(case.question, sample=take(case.question.sample, kept)),
+        case.signal[:, kept],
+        tuple(np.searchsorted(kept, np.intersect1d(group, kept)) for group in case.groups),
+        tuple(case.entities[i] for i in kept),
+    )

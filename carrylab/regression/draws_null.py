@@ -1,0 +1,127 @@
+"""The null of no predictability fitted to a panel: persistence estimated under it, and the shocks to draw from."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from carrylab.errors import InferenceError
+from carrylab.regression.bias import PERSISTENCE_CAP
+from carrylab.regression.sample import Bools, Floats, Ints
+
+FEWEST = 12  # neighbouring dates an entity needs, for three coefficients and a bias correction of order 1/T
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Null:
+    """y_{i,t+1} = mu_i + e, x_{i,t+1} = c_i + phi_i x_it + v, fitted entity by entity.
+
+    `persistence` (N,): phi, `capped` (N,) where it reached .999. `mean` (N,) of the signal; `first` (N,) row of its
+    first value and `start` (N,) that value less the mean. `outcome` (T, N): e, and `signal` (T, N): v with mean
+    zero, both in the row of the period in which they fall, NaN where there is none.
+    """
+
+    persistence: Floats
+    capped: Bools
+    mean: Floats
+    first: Ints
+    start: Floats
+    outcome: Floats
+    signal: Floats
+
+    @property
+    def pairs(self) -> Bools:
+        """Where both shocks of an entity stand (T, N)."""
+        return np.isfinite(self.outcome) & np.isfinite(self.signal)
+
+
+def fit_null(signal: Floats, outcomes: Floats, names: Sequence[str]) -> Null:
+    """Fit the null to a signal (T, N) and its one-period outcomes (T, N), NaN for holes; `names` (N,).
+
+    phi_R is the slope of x_{t+1} on x_t in the regression on (1, x_t, e_{t+1}), the restricted seemingly unrelated
+    estimate when nothing predicts; phi = phi_R + (1 - delta^2)(1 + 3 phi_R)/n, delta the correlation of e with the
+    least-squares v, n the transitions, held within +-.999. With phi by plain least squares its error is the error
+    of the predictive slope too, and the draws reject 6-12% of true nulls at 5%.
+    Source: Kendall (1954, Biometrika 41:403) for the correction; putting both together is our own.
+    """
+    shocks = outcomes - _column_means(outcomes)
+    there = np.isfinite(signal)
+    here = there[1:] & there[:-1] & np.isfinite(shocks[1:])
+    short = np.flatnonzero(here.sum(axis=0) < FEWEST)
+    if len(short):
+        raise InferenceError(
+            f"{names[short[0]]} has {here[:, short[0]].sum()} dates on which the signal, the one before it and the "
+            f"one-period outcome stand, draws need {FEWEST}; leave it out or choose errors that need no draws"
+        )
+    raw = np.array([_persistence(signal[:, i], shocks[:, i], here[:, i]) for i in range(signal.shape[1])])
+    persistence = np.clip(raw, -PERSISTENCE_CAP, PERSISTENCE_CAP)
+    mean, first = _column_means(signal), there.argmax(axis=0)
+    moved = np.full_like(signal, np.nan)
+    moved[1:] = signal[1:] - mean - persistence * (signal[:-1] - mean)
+    return Null(
+        persistence=persistence,
+        capped=np.abs(raw) > PERSISTENCE_CAP,
+        mean=mean,
+        first=first,
+        start=signal[first, np.arange(len(first))] - mean,
+        outcome=shocks,
+        signal=moved - _column_means(moved),
+    )
+
+
+def shock_pool(pairs: list[Bools]) -> Ints:
+    """Rows that may be drawn: those in which any entity of any panel has both shocks."""
+    return np.flatnonzero(np.any([part.any(axis=1) for part in pairs], axis=0))
+
+
+def pooled_shocks(null: Null, pool: Ints) -> Floats:
+    """Shocks of the drawn rows (2, D, N): outcome's and signal's, each entity's with mean zero.
+
+    An entity without both shocks on a drawn date takes those of another of its own dates: its k-th missing date
+    takes its k-th date that stands, and so round. So each entity keeps its own spread and the pairing of its
+    two shocks, entities that miss the same dates stay together, and no date is drawn less often for a late start.
+    """
+    pairs, both = null.pairs[pool], np.stack([null.outcome, null.signal])[:, pool]
+    for i in range(both.shape[2]):
+        own, missing = np.flatnonzero(pairs[:, i]), np.flatnonzero(~pairs[:, i])
+        both[:, missing, i] = both[:, own[np.arange(len(missing)) % len(own)], i]
+    centred: Floats = both - both.mean(axis=1, keepdims=True)
+    return centred
+
+
+def dated_shocks(null: Null) -> Floats:
+    """Shocks on every row of the calendar (2, T, N), for draws that keep the dates in order.
+
+    Each shock that stands is its own; a missing one is filled from the entity's own pairs as in `pooled_shocks`.
+    """
+    rows = np.arange(len(null.outcome))
+    own = np.stack([null.outcome, null.signal])
+    return np.where(np.isfinite(own), own, pooled_shocks(null, rows))
+
+
+def _persistence(signal: Floats, shocks: Floats, here: Bools) -> float:
+    """AR(1) slope of one entity before it is capped; `here` (T-1,) marks the transitions in use."""
+    before, after, shock = signal[:-1][here], signal[1:][here], shocks[1:][here]
+    before, after, shock = before - before.mean(), after - after.mean(), shock - shock.mean()
+    left = after - before * _slope(after, before)
+    size = float(left @ left) * float(shock @ shock)
+    explained = float(left @ shock) ** 2 / size if size > 0 else 0.0
+    clean, target = (part - shock * _slope(part, shock) for part in (before, after))
+    restricted = _slope(target, clean)
+    return restricted + (1.0 - explained) * (1.0 + 3.0 * restricted) / len(before)
+
+
+def _slope(y: Floats, x: Floats) -> float:
+    squares = float(x @ x)
+    return float(x @ y) / squares if squares > 0 else 0.0
+
+
+def _column_means(values: Floats) -> Floats:
+    """Means by entity over what stands (N,), NaN where nothing does."""
+    there = np.isfinite(values)
+    count = there.sum(axis=0)
+    total = np.where(there, values, 0.0).sum(axis=0)
+    means: Floats = np.divide(total, count, out=np.full(len(count), np.nan), where=count > 0)
+    return means
