@@ -52,6 +52,21 @@ class Curves:
             return None
         return Panel(self.codes, self.values[:, :, self.tenors.index(tenor)])
 
+    def of(self, codes: Sequence[str]) -> Curves:
+        """The curves of those of these codes that are here."""
+        kept = [at for at, code in enumerate(self.codes) if code in codes]
+        return Curves(tuple(self.codes[at] for at in kept), self.tenors, self.values[:, kept])
+
+    def alike(self) -> list[Curves]:
+        """The curves of codes that quote the same lengths, with those lengths alone."""
+        quotes = np.isfinite(self.values).any(axis=0)
+        found = []
+        for lengths in np.unique(quotes, axis=0):
+            kept = np.flatnonzero((quotes == lengths).all(axis=1))
+            tenors = tuple(tenor for tenor, there in zip(self.tenors, lengths, strict=True) if there)
+            found.append(Curves(tuple(self.codes[at] for at in kept), tenors, self.values[:, kept][:, :, lengths]))
+        return found
+
 
 def levels(tables: Sequence[Table], calendar: Calendar, key: str) -> Panel:
     """Raw values of plain series by one key (T, N)."""

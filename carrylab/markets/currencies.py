@@ -15,6 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from carrylab.data.calendar import Floats, Tenor, Window, horizon_years, lead, window
+from carrylab.data.files import shown
 from carrylab.data.panel import Curves, Panel, curves
 from carrylab.data.quotes import forward_quotes, spot_quotes
 from carrylab.data.read import MarketData
@@ -57,11 +58,13 @@ def read_currencies(data: MarketData) -> Currencies:
     spot = spot_quotes(data.tables["spot"], data.calendar, home).home
     deposits = data.tables.get("deposits")
     forwards = data.tables.get("forwards")
+    rates = curves(deposits, data.calendar, "currency", "tenor") if deposits else None
+    outright = forward_quotes(forwards, data.tables["spot"], data.calendar, home) if forwards else None
     return Currencies(
         codes=spot.codes,
         spot=spot.values,
-        rates=curves(deposits, data.calendar, "currency", "tenor") if deposits else None,
-        forwards=forward_quotes(forwards, data.tables["spot"], data.calendar, home) if forwards else None,
+        rates=rates and rates.of((home, *spot.codes)),
+        forwards=outright and outright.of(spot.codes),
     )
 
 
@@ -99,14 +102,25 @@ def forward_price(
         return _quoted_forward(market, world, horizon)
     if world.rates is None:
         raise DataError(f"market {market.name!r}: uncovered-interest needs deposits; declare them in its data")
+    if market.home not in world.rates.codes:
+        known = ", ".join(world.rates.codes)
+        raise DataError(f"market {market.name!r}: no deposits of the home currency {market.home!r}; found {known}")
     rates, notes = rates_at(world.rates, horizon, market, "deposits")
     h = horizon_years(horizon, data.calendar.interval)
     panel = Panel(world.rates.codes, rates)
-    if market.home not in panel.codes:
-        known = ", ".join(panel.codes)
-        raise DataError(f"market {market.name!r}: no deposits of the home currency {market.home!r}; found {known}")
-    differential = panel.pick(world.codes) - panel.column(str(market.home))[:, None]
-    return world.spot - h * differential, notes
+    if np.isnan(panel.column(str(market.home))).all():
+        raise DataError(
+            f"market {market.name!r}: no deposits of {horizon} of the home currency {market.home!r}, missing_tenor is "
+            f"{market.missing_tenor!r}; quote that length, or choose other horizons or another missing_tenor"
+        )
+    differential = _differential(panel, world, str(market.home))
+    return world.spot - h * differential, (*_absent("deposits", world, panel), *notes)
+
+
+def _absent(role: str, world: Currencies, quoted: Panel) -> tuple[str, ...]:
+    """A note on the currencies with a spot rate that the file of another role does not hold."""
+    absent = [code for code in world.codes if code not in quoted.codes]
+    return (f"no {role} ({shown(absent)})",) if absent else ()
 
 
 def _quoted_forward(market: Market, world: Currencies, horizon: Tenor) -> tuple[Floats, tuple[str, ...]]:
@@ -118,8 +132,9 @@ def _quoted_forward(market: Market, world: Currencies, horizon: Tenor) -> tuple[
         world.forwards.codes, world.forwards.tenors, (spot - world.forwards.values) / world.forwards.years
     )
     discounts, notes = rates_at(per_year, horizon, market, "forwards")
-    discount = Panel(per_year.codes, discounts).pick(world.codes) * horizon_years(horizon, market.interval)
-    return world.spot - discount, notes
+    panel = Panel(per_year.codes, discounts)
+    discount = panel.pick(world.codes) * horizon_years(horizon, market.interval)
+    return world.spot - discount, (*_absent("forwards", world, panel), *notes)
 
 
 def _one_step(
@@ -129,20 +144,40 @@ def _one_step(
     if any(table.source.timing == "average" for table in data.tables["spot"]):
         return None, ("spot rates are period averages, so one-period returns are no news; no one-period errors",)
     horizon, forward = whole
-    step = step_tenor(data.calendar)
-    quoted = world.rates if by_rates else world.forwards
-    notes: tuple[str, ...] = ()
-    if at.overlap == 0:
-        price = forward
-    elif step is not None and quoted is not None and same_length(quoted, step.years) is not None:
-        price, _ = forward_price(data, world, step, by_rates=by_rates)
-    else:
+    price, spread_out = forward, np.zeros(len(world.codes), dtype=bool)
+    if at.overlap:
         # Past the last whole horizon, too, the spread is earned over a whole horizon.
         steps = np.where(at.ends >= 0, at.ends - np.arange(len(at.ends)), at.overlap + 1)[:, None]
-        price = world.spot - (world.spot - forward) / steps
-        notes = (
-            f"one-period excess returns take the {horizon} spread in equal parts, as no one-period rate is quoted",
-        )
+        price = _one_period_forward(data, world, by_rates=by_rates)
+        spread_out = _stands(forward) & ~_stands(price)
+        price = np.where(spread_out, world.spot - (world.spot - forward) / steps, price)
     outcomes = np.full_like(world.spot, np.nan)
     outcomes[1:] = world.spot[1:] - price[:-1]
-    return outcomes, notes
+    if not spread_out.any():
+        return outcomes, ()
+    codes = shown(code for code, own in zip(world.codes, spread_out, strict=True) if own)
+    whose = f" ({codes})" if (_stands(forward) & ~spread_out).any() else ""
+    note = f"one-period excess returns take the {horizon} spread in equal parts, as no one-period rate is quoted{whose}"
+    return outcomes, (note,)
+
+
+def _stands(values: Floats) -> np.typing.NDArray[np.bool_]:
+    """Which currencies (N,) have any value."""
+    return np.asarray(np.isfinite(values).any(axis=0))
+
+
+def _one_period_forward(data: MarketData, world: Currencies, *, by_rates: bool) -> Floats:
+    """Log forward price of one period (T, N), a hole where neither the currency nor home quotes that length."""
+    step, quoted = step_tenor(data.calendar), world.rates if by_rates else world.forwards
+    same = None if step is None or quoted is None else same_length(quoted, step.years)
+    panel = None if same is None or quoted is None else quoted.at(same)
+    if same is None or panel is None:
+        return np.full_like(world.spot, np.nan)
+    if by_rates:
+        return world.spot - same.years * _differential(panel, world, str(data.market.home))
+    return panel.pick(world.codes)
+
+
+def _differential(rates: Panel, world: Currencies, home: str) -> Floats:
+    """Foreign less home rates per year (T, N)."""
+    return rates.pick(world.codes) - rates.column(home)[:, None]

@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
@@ -23,7 +24,7 @@ from carrylab.data.read import MarketData
 from carrylab.errors import DataError, StudyError
 from carrylab.markets.indices import YEAR, Equities, before, hedge, periods_in, read_equities, trailing
 from carrylab.markets.parity import Entity, Leg, Parity
-from carrylab.markets.tenors import SAME, STEP_TENORS, rates_at, same_length
+from carrylab.markets.tenors import SAME, STEP_TENORS, rates_at
 from carrylab.options import Market
 
 APPROXIMATION_BOUND = 0.05
@@ -135,12 +136,12 @@ def _riskless_year(data: MarketData, world: Equities) -> tuple[Floats, str, tupl
     if roll is None:
         rate, notes = rates_at(world.rates, YEAR, data.market, "deposits")
         return rate, "riskless rate", notes
-    rate, _ = rates_at(world.rates, roll, data.market, "deposits")
+    rate, notes = rates_at(world.rates, roll, data.market, "deposits")
     bills = [rate] + [lead(rate, window(data.calendar, roll.times(i))) for i in range(1, 12 // roll.months)]
     return (
         np.sum(bills, axis=0) * roll.years,
         "riskless rate beyond today's",
-        (f"the riskless year rolls {roll} bills",),
+        (f"the riskless year rolls {roll} bills", *notes),
     )
 
 
@@ -156,11 +157,9 @@ def _one_period(data: MarketData, world: Equities) -> tuple[Floats | None, tuple
     """One-period log excess returns (T, N), each in the row of its own period; None for averaged prices; and notes."""
     if any(table.source.timing == "average" for table in data.tables["prices"]):
         return None, ("prices are period averages, so there are no one-period errors",)
-    step = STEP_TENORS[data.calendar.interval]
-    bill = same_length(world.rates, step.years) or world.rates.tenors[0]
-    rate, _ = rates_at(world.rates, bill, data.market, "deposits")
-    note = f"one-period excess returns are over the {bill} bill, as none of {step} is quoted"
-    return world.total - before(rate) * step.years, (() if bill.years == step.years else (note,))
+    step, nearest = STEP_TENORS[data.calendar.interval], replace(data.market, missing_tenor="nearest")
+    rate, notes = rates_at(world.rates, step, nearest, "deposits")
+    return world.total - before(rate) * step.years, tuple(f"in one-period excess returns {note}" for note in notes)
 
 
 def carry(data: MarketData, world: Equities, entities: tuple[Entity, ...], horizon: Tenor) -> Parity:

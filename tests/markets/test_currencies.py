@@ -162,6 +162,55 @@ def test_trading_days_are_compared_with_quoted_lengths_by_252_a_year() -> None:
         )
 
 
+TWO = table("spot", "currency", {("AAA",): [1.0] * 5, ("BBB",): [2.0] * 5}, quote="home per foreign")
+UNEVEN = {
+    **{("HHH", tenor): [1.2] * 5 for tenor in ("1m", "2m", "3m")},
+    **{("AAA", tenor): [2.4] * 5 for tenor in ("1m", "2m", "3m")},
+    ("BBB", "1m"): [3.6] * 5,
+    ("BBB", "3m"): [6.0] * 5,
+}
+
+
+def test_every_currency_is_filled_between_its_own_lengths() -> None:
+    options = {"horizons": "2m", "missing_tenor": "linear in rate"}
+    parity = one(market("currencies", "uncovered-interest", TWO, deposits(UNEVEN), **options))
+    # AAA quotes 2.4 at 2m; BBB stands halfway between 3.6 and 6; home pays 1.2 percent.
+    np.testing.assert_allclose(parity.signal[0], [0.012 / 6, 0.036 / 6], atol=1e-15)
+    assert parity.notes == ("deposits of 2m are linear in the rate between quoted lengths (BBB)",)
+
+
+def test_a_currency_without_the_length_is_a_hole_and_noted() -> None:
+    parity = one(market("currencies", "uncovered-interest", TWO, deposits(UNEVEN), horizons="2m"))
+    assert parity.signal[0, 0] == pytest.approx(0.012 / 6, abs=1e-15)
+    assert np.isnan(parity.signal[:, 1]).all()
+    assert parity.notes == ("deposits of 2m are not quoted (BBB)",)
+    without = {key: rates for key, rates in UNEVEN.items() if key[0] != "BBB"}
+    parity = one(market("currencies", "uncovered-interest", TWO, deposits(without), horizons="2m"))
+    assert np.isnan(parity.signal[:, 1]).all()
+    assert parity.notes == ("no deposits (BBB)",)
+    parity = one(market("currencies", "forward-discount", TWO, forwards({("AAA", "1m"): [1.1] * 5}), horizons="1m"))
+    assert parity.notes == ("no forwards (BBB)",)
+
+
+def test_only_a_currency_without_a_month_s_rate_earns_its_spread_in_equal_parts() -> None:
+    rates = {key: values for key, values in UNEVEN.items() if key != ("BBB", "1m")}
+    parity = one(market("currencies", "uncovered-interest", TWO, deposits(rates), horizons="3m"))
+    # AAA a month at 2.4 less 1.2 percent; BBB a third of three months at 6 less 1.2 percent. Spot rates stand still.
+    np.testing.assert_allclose(parity.legs[0].one_step[1:], [[0.001, 0.004]] * 4, atol=1e-15)
+    assert parity.notes == (
+        "one-period excess returns take the 3m spread in equal parts, as no one-period rate is quoted (BBB)",
+    )
+
+
+def test_a_hole_in_spot_leaves_the_one_period_return_of_a_quoted_forward() -> None:
+    holed = table("spot", "currency", {("AAA",): [1.1, math.nan, 1.2, 1.2, 1.2]}, quote="home per foreign")
+    prices = {("AAA", "1m"): [1.0] * 5, ("AAA", "3m"): [1.0] * 5}
+    parity = one(market("currencies", "forward-discount", holed, forwards(prices), horizons="3m"))
+    # s_2 - f_1 needs no spot rate at 1.
+    np.testing.assert_allclose(parity.legs[0].one_step[2, 0], math.log(1.2), atol=1e-15)
+    assert np.isnan(parity.legs[0].one_step[1, 0])
+
+
 def test_a_hole_in_the_spot_rate_is_a_hole_of_its_two_returns() -> None:
     holed = table("spot", "currency", {("AAA",): [1.10, math.nan, 1.05, 1.07, 1.08]}, quote="home per foreign")
     parity = one(market("currencies", "uncovered-interest", holed, deposits(), horizons="1m"))
@@ -178,6 +227,12 @@ def test_a_hole_in_the_spot_rate_is_a_hole_of_its_two_returns() -> None:
             "uncovered-interest",
             (spot(), deposits({("AAA", "1m"): [1.0] * 5})),
             "market 'M': no deposits of the home currency 'HHH'; found AAA",
+        ),
+        (
+            "uncovered-interest",
+            (spot(), deposits({("AAA", "1m"): [1.0] * 5, ("HHH", "3m"): [1.0] * 5})),
+            "market 'M': no deposits of 1m of the home currency 'HHH', missing_tenor is 'exact'; quote that length, or "
+            "choose other horizons or another missing_tenor",
         ),
         (
             "uncovered-interest",

@@ -203,7 +203,7 @@ def test_on_a_month_calendar_bills_of_a_quarter_are_rolled_each_quarter() -> Non
     parity = one(data, ECONOMIES)
     # The bills of months 0, 3, 6 and 9.
     assert leg(parity, "riskless rate beyond today's").values[0, 0] == pytest.approx(0.22 / 4, abs=1e-15)
-    assert "one-period excess returns are over the 3m bill, as none of 1m is quoted" in parity.notes
+    assert "in one-period excess returns deposits of 3m stand in for 1m" in parity.notes
 
 
 def test_one_period_excess_returns_are_over_the_bill_of_the_period_before() -> None:
