@@ -166,3 +166,95 @@ def test_a_peg_is_a_note(tmp_path: Path) -> None:
         PAIRS.replace('"pair"', '"home per foreign"'),
     )
     assert ("S2", "CCC") in ids(found, "note")
+
+
+def test_spot_unchanged_while_its_forward_moves(tmp_path: Path) -> None:
+    # Two months: one short of what is stale by itself.
+    files = market()
+    files["spot"] = files["spot"].reset_index(drop=True)
+    files["forwards"] = files["forwards"].reset_index(drop=True)
+    files["spot"].loc[[41, 42], "value"] = files["spot"].loc[40, "value"]
+    (one,) = [one for one in seen(tmp_path, files) if one.id == "D3"]
+    assert (one.level, one.series, one.first, one.last) == ("warning", "BBB", "2003-06", "2003-07")
+    files["forwards"].loc[[41, 42], "value"] = files["forwards"].loc[40, "value"]
+    assert [one for one in seen(tmp_path, files) if one.id == "D3"] == []
+
+
+def all_crosses() -> pd.DataFrame:
+    """The six pairs of AAA, BBB, CCC and DDD, all consistent."""
+    spot = market(("BBB", "CCC", "DDD"))["spot"].pivot_table(index="date", columns="currency", values="value")
+    spot["AAA"] = 1.0
+    pairs = ("BBBAAA", "CCCAAA", "DDDAAA", "BBBCCC", "BBBDDD", "CCCDDD")
+    return pd.concat(
+        pd.DataFrame({"date": spot.index, "pair": pair, "value": spot[pair[:3]] / spot[pair[3:]]}) for pair in pairs
+    )
+
+
+def triangles(folder: Path, spot: pd.DataFrame) -> list[Check]:
+    files = {"deposits": market(("BBB", "CCC", "DDD"))["deposits"], "spot": spot}
+    return [one for one in seen(folder, files, PAIRS) if one.id == "P2"]
+
+
+def test_every_triangle_is_tried_and_the_one_wrong_pair_named(tmp_path: Path) -> None:
+    spot = all_crosses()
+    assert triangles(tmp_path, spot) == []
+    # CCCDDD is in two triangles, one of them without home; BBBAAA in two with home.
+    for pair in ("CCCDDD", "BBBAAA"):
+        (one,) = triangles(tmp_path, spot.assign(value=spot["value"].where(spot["pair"] != pair, 1 / spot["value"])))
+        assert (one.level, one.series) == ("error", pair)
+        assert one.advice == f"{pair} looks turned round"
+
+
+def test_a_triangle_without_home(tmp_path: Path) -> None:
+    spot = all_crosses()
+    spot = spot[spot["pair"].isin(["BBBAAA", "BBBCCC", "BBBDDD", "CCCDDD"])]
+    wrong = spot["value"].where((spot["pair"] != "CCCDDD") | (spot["date"] != "2004-03-31"), 1.2 * spot["value"])
+    (one,) = triangles(tmp_path, spot.assign(value=wrong))
+    assert (one.level, one.first, one.last) == ("error", "2004-03", "2004-03")
+    # ln 1.2 = .1823
+    assert "open by up to 18.23% in 1 periods" in one.seen
+
+
+def test_rounding_opens_a_triangle_a_little(tmp_path: Path) -> None:
+    spot = all_crosses()
+    wrong = spot["value"].where(spot["pair"] != "CCCDDD", 1.002 * spot["value"])
+    (one,) = triangles(tmp_path, spot.assign(value=wrong))
+    assert (one.level, one.series) == ("warning", "CCCDDD")
+
+
+def test_half_spreads_leave_a_triangle_room(tmp_path: Path) -> None:
+    spot = all_crosses()
+    value = spot["value"].where(spot["pair"] != "CCCDDD", 1.002 * spot["value"])
+    wide = spot.assign(bid=0.9992 * value, ask=1.0008 * value).drop(columns="value")
+    # Half spreads of 8bp each, and 10bp: 34bp in all against a gap of 20bp.
+    assert triangles(tmp_path, wide) == []
+
+
+def test_new_money_moves_every_pair_of_a_currency(tmp_path: Path) -> None:
+    spot = all_crosses()
+    late = spot["date"] >= "2005-01"
+    reform = spot["value"].where(~late | (spot["pair"] != "CCCAAA"), 1000 * spot["value"])
+    reform = reform.where(~late | (spot["pair"] != "CCCDDD"), 1000 * spot["value"])
+    reform = reform.where(~late | (spot["pair"] != "BBBCCC"), spot["value"] / 1000)
+    files = {"deposits": market(("BBB", "CCC", "DDD"))["deposits"], "spot": spot.assign(value=reform)}
+    found = [one for one in seen(tmp_path, files, PAIRS) if one.id in ("D6", "D7")]
+    assert {(one.id, one.series, one.first) for one in found} == {
+        ("D7", pair, "2005-01") for pair in ("BBBCCC", "CCCAAA", "CCCDDD")
+    }
+    alone = spot["value"].where(~late | (spot["pair"] != "CCCDDD"), 1000 * spot["value"])
+    files["spot"] = spot.assign(value=alone)
+    found = [one for one in seen(tmp_path, files, PAIRS) if one.id in ("D6", "D7")]
+    assert [(one.id, one.series) for one in found] == [("D6", "CCCDDD")]
+
+
+def test_a_wide_quote(tmp_path: Path) -> None:
+    files = market()
+    quoted = files["spot"].assign(bid=files["spot"]["value"] * 0.999, ask=files["spot"]["value"] * 1.001)
+    files["spot"] = quoted.drop(columns="value").reset_index(drop=True)
+    files["spot"].loc[7, "ask"] = files["spot"].loc[7, "bid"] * 1.03
+    (one,) = [one for one in seen(tmp_path, files) if one.id == "P3"]
+    assert (one.level, one.series, one.first, one.last) == ("warning", "BBB", "2000-08", "2000-08")
+
+
+def test_a_float_is_no_peg(tmp_path: Path) -> None:
+    assert "S2" not in {one.id for one in seen(tmp_path, market())}

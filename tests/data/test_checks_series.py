@@ -121,3 +121,80 @@ def test_an_added_predictor_without_a_lag_is_a_note(tmp_path: Path) -> None:
     assert [(one.id, one.level) for one in seen(tmp_path, market() | {"growth": growth}, study)] == [("L1", "note")]
     lagged = study.replace('"growth.csv"', '"growth.csv", known_after = "2m"')
     assert seen(tmp_path, market() | {"growth": growth}, lagged) == []
+
+
+def test_a_power_of_ten_that_does_not_last_is_a_slip(tmp_path: Path) -> None:
+    found = seen(tmp_path, changed(market(), at(60, lambda v: v[60] * 10)))
+    assert [(one.id, one.level, one.series) for one in found] == [("D8", "note", "CCC")]
+
+
+def test_a_float_after_a_peg_is_one_break(tmp_path: Path) -> None:
+    rng = np.random.default_rng(8)
+    calm, wild = 0.0005 * rng.standard_normal(60), 0.03 * rng.standard_normal(60)
+    calm[0], wild[0] = 0.0, 0.4
+    found = seen(tmp_path, changed(market(), lambda own: own.assign(value=np.exp(np.cumsum([*calm, *wild])))))
+    assert [(one.series, one.first) for one in found if one.id == "D6"] == [("CCC", "2005-01")]
+    assert [one.series for one in found if one.id == "D8"] == ["CCC"]
+
+
+def test_a_declared_peg_that_breaks_is_no_splice(tmp_path: Path) -> None:
+    files = changed(market(), at(slice(60, None), lambda v: v[60:] * 1.6))
+    declared = STUDY.replace("[market.data]", 'pegs = ["CCC"]\n[market.data]')
+    found = [one for one in seen(tmp_path, files, declared) if one.series == "CCC"]
+    assert [(one.id, one.level) for one in found] == [("D8", "note")]
+
+
+TWO_FILES = STUDY.replace(
+    'spot = { file = "spot.csv", quote = "home per foreign" }',
+    'spot = [ { file = "old.csv", quote = "home per foreign" }, { file = "spot.csv", quote = "home per foreign" } ]',
+)
+
+
+@pytest.mark.parametrize(("factor", "expected"), [(1.0, []), (2.0, [("spot.csv", "CCC", "2005-01")])])
+def test_files_that_join_at_another_level(tmp_path: Path, factor: float, expected: list[tuple[str, str, str]]) -> None:
+    spot = market()["spot"]
+    early = spot["date"] < "2005-01"
+    old = spot[early].assign(value=spot["value"].where(spot["currency"] != "CCC", spot["value"] / factor))
+    found = seen(tmp_path, market() | {"old": old, "spot": spot[~early]}, TWO_FILES)
+    joins = [one for one in found if one.id == "D6"]
+    assert [(one.file, one.series, one.first) for one in joins] == expected
+    assert all("takes over from old.csv" in one.seen and "times 2" in one.advice for one in joins)
+
+
+def first_of_month(files: dict[str, pd.DataFrame]) -> dict[str, pd.DataFrame]:
+    return {name: frame.assign(date=frame["date"].str[:8] + "01") for name, frame in files.items()}
+
+
+def test_dates_at_the_start_of_the_period(tmp_path: Path) -> None:
+    found = seen(tmp_path, first_of_month(market()))
+    early = [one for one in found if one.id == "D4"]
+    assert {(one.level, one.file, one.series) for one in early} == {
+        ("warning", "spot.csv", ""),
+        ("warning", "deposits.csv", ""),
+    }
+    assert all('timing = "average"' in one.advice for one in early)
+
+
+def test_last_business_days_before_a_weekend_are_the_end(tmp_path: Path) -> None:
+    ends = [str((month.end_time - pd.offsets.BDay(0) - pd.offsets.BDay(1)).date()) for month in worlds.MONTHS]
+    day = dict(zip(worlds.DATES, ends, strict=True))
+    files = {name: frame.assign(date=frame["date"].map(day)) for name, frame in market().items()}
+    assert [one.line() for one in seen(tmp_path, files)] == []
+
+
+def test_stale_prices_of_one_series_are_one_line(tmp_path: Path) -> None:
+    def twice(own: pd.DataFrame) -> pd.DataFrame:
+        own.loc[own.index[30:34], "value"] = own["value"][29]
+        own.loc[own.index[70:75], "value"] = own["value"][69]
+        return own
+
+    (one,) = [one for one in seen(tmp_path, changed(market(), twice)) if one.id == "D3"]
+    assert (one.first, one.last, one.seen) == ("2005-11", "2006-03", "price unchanged for 5 periods")
+    assert one.advice.startswith("1 more such runs")
+
+
+def test_deposits_may_stand_still(tmp_path: Path) -> None:
+    files = market()
+    files["deposits"] = files["deposits"].reset_index(drop=True)
+    files["deposits"].loc[10:30, "value"] = 2.0
+    assert "D3" not in {one.id for one in seen(tmp_path, files)}

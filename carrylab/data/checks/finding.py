@@ -62,8 +62,8 @@ class Dense:
         return self.table.source.role
 
     def logs(self) -> Floats:
-        """Logs (T, S) of prices; NaN for holes and what is not above zero, which reading an exchange rate refuses."""
-        return np.log(np.where(self.values > 0, self.values, np.nan))
+        """Logs (T, S) of prices, which reading has found above zero."""
+        return np.log(self.values)
 
     def changes(self) -> Floats:
         """Log changes (T, S) of a price, plain changes of anything else; NaN in the first row and beside holes."""
