@@ -107,14 +107,17 @@ class PanelColumns:
 
 @dataclass(frozen=True, slots=True)
 class Inference:
-    """How standard errors are made. `lags` and `factor` of None mean the stated rule of the error kind."""
+    """How standard errors are made. `lags` and `factor` of None mean the stated rule of the error kind.
+
+    `draws` under the null stand behind the second opinion; 0 means none.
+    """
 
     errors: Errors = "auto"
     lags: int | None = None
     factor: Factor | None = None
     reference: Reference | None = None
     confidence: float = 0.95
-    draws: int = 9999
+    draws: int = 0
     seed: int = 7
 
 

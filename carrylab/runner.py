@@ -17,6 +17,7 @@ from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
+from carrylab.evidence.drawn import drawable, drawn_rows
 from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
 from carrylab.evidence.setting import Fit, Row, errors_of
@@ -187,21 +188,20 @@ def _one_step(leg: Leg, steps: int) -> OneStep | None:
 
 def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
     """Fit every parity of one market, pooled and by group, and write its rows."""
-    fits: list[Fit] = []
-    samples: list[tuple[str, Sample]] = []
-    rows: list[Row] = []
-    for parity in built.parities:
-        sample, terms = sample_of(parity, built.data)
-        found = list(_fits(parity, sample, built.market))
-        said = (AVERAGED,) if is_averaged(built.data) else ()
-        rows += [row for one in found for row in (*share_rows(one), *summary_rows(one, said))]
-        rows += group_rows(found[1:])
-        rows += regression_ledger_rows(found[0])
-        rows += latest_rows(found[0], terms)
+    inference = built.market.inference
+    prepared = [(parity, *sample_of(parity, built.data)) for parity in built.parities]
+    families = [tuple(_fits(parity, sample, built.market)) for parity, sample, _ in prepared]
+    rows: list[Row] = drawn_rows(families, inference.draws, inference.seed)
+    said = (AVERAGED,) if is_averaged(built.data) else ()
+    for family, (parity, _, terms) in zip(families, prepared, strict=True):
+        drawn = bool(inference.draws) and drawable(family[0])
+        rows += [row for one in family for row in (*share_rows(one, drawn=drawn), *summary_rows(one, said))]
+        rows += group_rows(family[1:])
+        rows += regression_ledger_rows(family[0])
+        rows += latest_rows(family[0], terms)
         rows += _other_rho(parity, built, economies)
-        fits += found
-        samples += [(one.sample.label, one.sample) for one in found]
-    return Fitted(tuple(fits), tuple(samples), tuple(rows))
+    fits = tuple(one for family in families for one in family)
+    return Fitted(fits, tuple((one.sample.label, one.sample) for one in fits), tuple(rows))
 
 
 def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:
@@ -213,7 +213,7 @@ def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:
     for label in dict.fromkeys(labels):
         columns = [i for i, own in enumerate(labels) if own == label]
         part = take(sample, columns, label=f"{sample.label}, {market.by} {label}")
-        yield _fit(parity, part, label, market)
+        yield replace(_fit(parity, part, label, market), columns=tuple(columns))
 
 
 def _fit(parity: Parity, sample: Sample, group: str, market: Market, name: str = "all") -> Fit:

@@ -27,7 +27,8 @@ class Fit:
     """One group of one parity: sample, estimate and errors.
 
     `headline` are the errors the study chose. `away` are valid away from the null as well: equal to the headline,
-    or cosines where the headline imposes the null of no premium.
+    or cosines where the headline imposes the null of no premium. `columns` are the entities of the pooled sample that
+    a group takes.
     """
 
     parity: Parity
@@ -38,6 +39,7 @@ class Fit:
     away: Errors
     confidence: float
     name: str = "all"
+    columns: tuple[int, ...] = ()
 
     @property
     def weights(self) -> Floats:

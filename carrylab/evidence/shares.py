@@ -18,12 +18,13 @@ from carrylab.regression.shares import Quantity, Shares, shares
 NO_NULL = "no null of its own; the joint null is that all other weighted slopes sum to one"
 
 
-def share_rows(fit: Fit) -> list[Row]:
-    """Every row of section `shares` for one fit."""
+def share_rows(fit: Fit, *, drawn: bool = False) -> list[Row]:
+    """Every row of section `shares` for one fit; `drawn`: the return leg's second opinion comes from draws instead."""
     rows = list(_coefficients(fit, fit.headline, "headline"))
-    rows += _second_opinion(fit)
+    second = _second_opinion(fit)
     if fit.has_identity:
         rows += _quantities(fit)
+    rows += [row for row in second if not (drawn and row["role"] == "return")]
     place = fit.place() | {"section": "shares"}
     return [place | row for row in rows]
 
@@ -82,7 +83,11 @@ def _second_opinion(fit: Fit) -> list[Row]:
     rows = []
     for at, leg in enumerate(fit.parity.legs):
         if fit.headline.kinds[at] == "one-period":
-            rows.append(_coefficient(fit, fit.away, (0, at), "second opinion") | _of_signal(fit, leg, at))
+            row = _coefficient(fit, fit.away, (0, at), "second opinion")
+            rows.append(row | _of_signal(fit, leg, at))
+            if leg.role == "return" and fit.has_identity:
+                premium = parity_shares(fit).premium
+                rows.append(row | {"term": "nothing paid", **_scaled(premium, fit.away, at, fit.confidence)})
     return rows
 
 
@@ -100,9 +105,6 @@ def _quantities(fit: Fit) -> Iterator[Row]:
     if at is not None:
         nothing = _coefficient(fit, fit.headline, (0, at), "headline")
         yield nothing | {"term": "nothing paid", **_scaled(found.premium, fit.headline, at, fit.confidence)}
-        if fit.away is not fit.headline:
-            second = _coefficient(fit, fit.away, (0, at), "second opinion")
-            yield second | {"term": "nothing paid", **_scaled(found.premium, fit.away, at, fit.confidence)}
     if fit.leg_of("fundamental") is not None:
         yield _combination(fit, found.expectation) | {"term": "all paid", "note": "null: nothing comes true"}
 

@@ -67,7 +67,9 @@ class Column:
 
 def columns_of(findings: pd.DataFrame, parity: str | None = None) -> list[Column]:
     """One column a market: the named parity, or each market's first, at the horizon most markets share."""
-    pooled = findings[(findings["group"] == "pooled") & findings["section"].isin(["shares", "summary", "warning"])]
+    pooled = findings[
+        (findings["group"] == "pooled") & findings["section"].isin(["shares", "summary", "warning", "draws"])
+    ]
     shares = pooled[pooled["section"] == "shares"]
     first = shares.drop_duplicates("market").set_index("market")["parity"]
     wanted = {market: parity or own for market, own in first.items()}
@@ -173,12 +175,36 @@ def _tests(columns: list[Column]) -> list[Line]:
         _line(
             "  second opinion", columns, lambda c: p_cell(c.number("nothing paid", "p_value", rank="second opinion"))
         ),
+        _line("  at 5%, a premium is", columns, _firm),
         _line("all is paid", columns, lambda c: p_cell(c.number("all paid", "p_value"))),
         _line(
             "true size of a 5% test, %",
             columns,
             lambda c: percent_cell(c.number("predicted size", section="summary"), 0),
         ),
+        *_by_chance(columns),
+    ]
+
+
+def _firm(column: Column) -> Cell:
+    """What the headline and the second opinion say together: firm only where both agree."""
+    found = [column.number("nothing paid", "p_value", rank=rank) for rank in ("headline", "second opinion")]
+    known = [p for p in found if not math.isnan(p)]
+    if len(known) < 2:
+        return Cell()
+    below = sum(p < 0.05 for p in known)
+    return word_cell(("not seen", "in doubt", "firm")[below])
+
+
+def _by_chance(columns: list[Column]) -> list[Line]:
+    """What draws under the null say of slope and R2; nothing where there were none."""
+    return [
+        _line(
+            "share paid, bias taken out",
+            columns,
+            lambda c: number_cell(c.number("bias-corrected slope", section="draws")),
+        ),
+        _line("R2 by chance, 95%", columns, lambda c: number_cell(c.number("R2 by chance", section="draws"), 3)),
     ]
 
 
@@ -268,6 +294,12 @@ def _notes(columns: list[Column]) -> tuple[str, ...]:
     for column in columns:
         said.setdefault(_method(column), []).append(column.market)
     methods = [f"{', '.join(markets)}: {method}." for method, markets in said.items()]
+    seconds: dict[str, list[str]] = {}
+    for column in columns:
+        words = _second_words(column)
+        if words:
+            seconds.setdefault(words, []).append(column.market)
+    methods += [f"Second opinion, {', '.join(markets)}: {method}." for method, markets in seconds.items()]
     warnings = [
         f"{column.market}: {text}."
         for column in columns
@@ -283,6 +315,13 @@ def _notes(columns: list[Column]) -> tuple[str, ...]:
         *methods,
         *warnings,
     )
+
+
+def _second_words(column: Column) -> str:
+    """Method of the second opinion without the effects, where it is not the one of the other rows."""
+    found = column.find("nothing paid", rank="second opinion")
+    words = str(found["method"].iloc[0]) if len(found) else ""
+    return "" if words == column.text("all paid", "method") else words.partition("; ")[2]
 
 
 def _method(column: Column) -> str:

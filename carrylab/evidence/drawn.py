@@ -1,0 +1,112 @@
+"""Draws under the null behind the return leg's test: p-values, bias-corrected slope, and what chance alone gives."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+import numpy as np
+
+from carrylab.evidence.setting import EFFECTS, Fit, Row
+from carrylab.regression.draws import Case, Draws, draw
+from carrylab.regression.draws_measure import Question
+from carrylab.regression.draws_tests import band, bias_corrected, equal_tailed, rarity, stepdown, upper_band
+from carrylab.regression.sample import Floats, Ints
+
+WORKERS = 2
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Drawn:
+    """What the draws say of every hypothesis, all arrays (H,) or (2, H); `words` says how they were made."""
+
+    p_value: Floats
+    slope: Floats
+    adjusted: Floats
+    slope_band: Floats
+    r2_band: Floats
+    statistic: Floats
+    words: str
+
+
+def drawable(fit: Fit) -> bool:
+    """Whether a pooled fit has one-period outcomes that stand in their own period, so that its null can be drawn."""
+    at = fit.leg_of("return")
+    outcome = None if at is None else fit.sample.one_step[at]
+    return outcome is not None and outcome.outcomes.ndim == 2
+
+
+def drawn_rows(families: Sequence[Sequence[Fit]], count: int, seed: int) -> list[Row]:
+    """Rows for all fits of one market, drawn together: each family is a pooled fit followed by its groups.
+
+    rank "second opinion": the return leg's slope and test with the draws' p; section "draws": the rest.
+    """
+    chosen = [family for family in families if drawable(family[0])]
+    if not count or not chosen:
+        return []
+    with ThreadPoolExecutor(WORKERS) as pool:
+        found = draw([_case(family) for family in chosen], count, seed=seed, spread=pool.map)
+    said = _said(found, chosen[0][0].confidence)
+    fits = [fit for family in chosen for fit in family]
+    return [row for h, fit in enumerate(fits) for row in _rows(fit, said, h)]
+
+
+def _case(family: Sequence[Fit]) -> Case:
+    """The pooled fit as a panel to draw, its groups as the hypotheses."""
+    pooled = family[0]
+    at = pooled.leg_of("return")
+    assert at is not None
+    question = Question(pooled.sample, at, pooled.parity.legs[at].null or 0.0, pooled.estimate.effects)
+    names = tuple(entity.name for entity in pooled.parity.entities)
+    return Case(question, pooled.parity.signal, tuple(_columns(pooled, fit) for fit in family), names)
+
+
+def _columns(pooled: Fit, fit: Fit) -> Ints:
+    """Columns of the pooled sample that a group's fit takes."""
+    if fit is pooled:
+        return np.arange(pooled.sample.mask.shape[1])
+    return np.array(fit.columns, dtype=np.int64)
+
+
+def _said(found: Draws, confidence: float) -> Drawn:
+    data, draws = found.data, found.draws
+    return Drawn(
+        p_value=equal_tailed(data.one_period, draws.one_period),
+        slope=bias_corrected(data.slope, draws.slope, found.nulls),
+        adjusted=stepdown(*rarity(data.one_period, draws.one_period)),
+        slope_band=band(draws.slope, confidence),
+        r2_band=upper_band(draws.r2),
+        statistic=data.one_period,
+        words=found.words,
+    )
+
+
+def _rows(fit: Fit, said: Drawn, h: int) -> list[Row]:
+    at = fit.leg_of("return")
+    assert at is not None
+    leg = fit.parity.legs[at]
+    method = f"{EFFECTS[fit.estimate.effects]}; equal-tailed p of the one-period t, {said.words}"
+    place = fit.place() | {"leg": leg.name, "role": leg.role}
+    slope = float(fit.estimate.coefficients[0, at])
+    test = {
+        "rank": "second opinion",
+        "section": "shares",
+        "estimate": slope,
+        "std_error": float(fit.headline.std_error[0, at]),
+        "statistic": float(said.statistic[h]),
+        "p_value": float(said.p_value[h]),
+        "null": leg.null,
+        "method": method,
+    }
+    lower, upper = (float(end) for end in said.slope_band[:, h])
+    draws = place | {"section": "draws", "method": said.words}
+    shares = [place | test | {"term": "nothing paid", "estimate": leg.weight * slope}] if leg.weight is not None else []
+    return [
+        place | test | {"term": "signal", "r2": float(fit.estimate.r2[at])},
+        *shares,
+        draws | {"term": "bias-corrected slope", "estimate": float(said.slope[h])},
+        draws | {"term": "slope by chance", "lower": lower, "upper": upper},
+        draws | {"term": "R2 by chance", "estimate": float(said.r2_band[h]), "note": "95th percentile under the null"},
+        draws | {"term": "stepdown", "p_value": float(said.adjusted[h]), "note": "over all hypotheses of the market"},
+    ]

@@ -1,0 +1,73 @@
+"""Draws under the null as findings: opt-in, seeded, and beside the headline as a second opinion."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pandas as pd
+import pytest
+import worlds
+
+import carrylab
+from carrylab.findings import KEY
+
+DRAWS = 199
+
+
+def findings(folder: Path, study: str, files: dict[str, pd.DataFrame], inference: str = "") -> pd.DataFrame:
+    text = f"[inference]\n{inference}\n" if inference else ""
+    return carrylab.run(carrylab.read_study(worlds.write(folder, study + text, **files))).findings
+
+
+def of(found: pd.DataFrame, section: str, term: str, group: str = "pooled") -> pd.Series:
+    rows = found[(found["section"] == section) & (found["term"] == term) & (found["group"] == group)]
+    return rows[rows["rank"].isin(["", "second opinion"])].iloc[0]
+
+
+def test_without_draws_the_second_opinion_is_cosines(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies())
+    assert "cosines" in of(found, "shares", "nothing paid")["method"]
+    assert not (found["section"] == "draws").any()
+
+
+def test_draws_stand_behind_the_second_opinion(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies(), f"draws = {DRAWS}\nseed = 3")
+    assert not found.duplicated(list(KEY)).any()
+    for group in ("pooled", "BBB", "CCC"):
+        second = of(found, "shares", "nothing paid", group)
+        assert second["method"].startswith("entity effects; equal-tailed p of the one-period t, 199 draws")
+        assert 2 / (DRAWS + 1) <= second["p_value"] <= 1
+        whole = second["p_value"] * (DRAWS + 1) / 2
+        assert whole == pytest.approx(round(whole))
+        band = of(found, "draws", "slope by chance", group)
+        assert band["lower"] < band["upper"]
+        assert 0 < of(found, "draws", "R2 by chance", group)["estimate"] < 1
+        assert of(found, "draws", "stepdown", group)["p_value"] >= second["p_value"] - 1e-12
+
+
+def test_the_statistic_is_the_headline_t(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies(), f"draws = {DRAWS}")
+    rows = found[(found["term"] == "nothing paid") & (found["group"] == "pooled")].set_index("rank")
+    assert rows.loc["second opinion", "statistic"] == pytest.approx(rows.loc["headline", "statistic"], rel=1e-9)
+    assert rows.loc["second opinion", "estimate"] == pytest.approx(rows.loc["headline", "estimate"])
+
+
+def test_the_same_seed_gives_the_same_findings_and_another_seed_others(tmp_path: Path) -> None:
+    first, again, other = (
+        findings(tmp_path, worlds.EQUITIES, worlds.equities(), f"draws = {DRAWS}\nseed = {seed}") for seed in (1, 1, 2)
+    )
+    pd.testing.assert_frame_equal(first, again)
+    assert not first["p_value"].equals(other["p_value"])
+
+
+def test_bonds_keep_cosines_as_their_monthly_returns_have_no_simple_null(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.BONDS, worlds.bonds(), f"draws = {DRAWS}")
+    assert not (found["section"] == "draws").any()
+
+
+def test_the_report_says_what_both_opinions_say_together(tmp_path: Path) -> None:
+    text = f"{worlds.CURRENCIES}[inference]\ndraws = {DRAWS}\n"
+    results = carrylab.run(carrylab.read_study(worlds.write(tmp_path, text, **worlds.currencies())))
+    assert results.table().loc["  at 5%, a premium is", "FX"] == "not seen"
+    assert "share paid, bias taken out" in results.table().index
+    assert "199 draws under the null" in results.report()
