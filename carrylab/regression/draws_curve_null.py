@@ -18,6 +18,7 @@ FAST = (0.3, 0.5, 0.6, 0.7, 0.8, 0.86)
 APART = 0.004  # the two slower roots; nearer ones are one root
 ROOTS = np.array([roots for roots in product(FAST, MIDDLE, SLOW) if roots[2] - roots[1] >= APART - 1e-12])
 LARGE_FIT = 0.0010  # ten basis points: larger fitting errors were never tried
+MATTERS = 0.5  # part of the longest yield's standard deviation that a root on the edge may not move
 FEWEST = 60  # dates of the state
 
 
@@ -51,7 +52,7 @@ def average_weights(roots: Floats, maturities: Ints) -> Floats:
 
 
 def state_of(maturities: Ints) -> Ints:
-    """Positions of the state's three maturities: the shortest, the one nearest to two fifths of the longest, the longest."""
+    """Positions of the state's maturities: the shortest, the one nearest to two fifths of the longest, the longest."""
     middle = int(np.abs(maturities[1:-1] - 0.4 * maturities[-1]).argmin()) + 1
     return np.array([0, middle, len(maturities) - 1])
 
@@ -61,7 +62,7 @@ def fit_curves(yields: Floats, maturities: Ints, names: Sequence[str]) -> CurveN
 
     The state is three of the yields, z = M f with M_mj = L_m(l_j), so z_t = A z_{t-1} + u, A = M diag(l) M^-1; the
     roots l minimise det sum u u' over a grid. Fitting errors are the residuals of the other yields on the state.
-    Refused, with the economy's name, where the slowest root sits on the edge of the grid or the fit is poor.
+    Refused, with the economy's name, where a slowest root that matters sits on the grid's edge or the fit is poor.
     Source: Bekaert, Hodrick and Marshall (1997, JFE 44:309) and Bekaert and Hodrick (2001, JF 56:1357) for draws that
     impose the hypothesis; the roots as parameters are our own.
     """
@@ -70,8 +71,8 @@ def fit_curves(yields: Floats, maturities: Ints, names: Sequence[str]) -> CurveN
             f"draws of a curve need four maturities or more, here are {len(maturities)}; choose one-period errors"
         )
     state = state_of(maturities)
-    there = np.isfinite(yields).all(axis=2)
-    pairs: Bools = np.zeros_like(there)
+    there = np.asarray(np.isfinite(yields).all(axis=2))
+    pairs = np.zeros(there.shape, dtype=np.bool_)
     pairs[1:] = there[1:] & there[:-1]
     pool = shock_pool([pairs])
     parts = [_one_curve(yields[:, i], maturities, state, (pairs[:, i], names[i])) for i in range(len(names))]
@@ -123,8 +124,8 @@ def _one_curve(yields: Floats, maturities: Ints, state: Ints, place: tuple[Bools
     z = level[:, state]
     rows = np.flatnonzero(here)
     roots = choose_roots(z[rows - 1] - z[rows - 1].mean(axis=0), z[rows] - z[rows].mean(axis=0), maturities[state])
-    _refuse_edge(roots, name)
-    factors = z @ np.linalg.inv(average_weights(roots, maturities[state])).T
+    loads = average_weights(roots, maturities[state])
+    factors = z @ np.linalg.inv(loads).T
     shocks = np.full_like(factors, np.nan)
     shocks[1:] = factors[1:] - roots * factors[:-1]
     slopes = np.linalg.lstsq(z[rows], level[rows], rcond=None)[0]
@@ -133,15 +134,20 @@ def _one_curve(yields: Floats, maturities: Ints, state: Ints, place: tuple[Bools
     others = np.delete(errors, state, axis=1)[rows]
     noise = float(np.sqrt((others**2).sum() / (others.shape[1] * (len(rows) - z.shape[1] - 1))))
     _refuse_poor_fit(noise, name)
+    _refuse_edge(roots, float(np.std(loads[-1, 2] * factors[rows, 2]) / np.std(z[rows, -1])), name)
     first = np.isfinite(yields).all(axis=1).argmax()
     return _Curve(roots, factors[first], shocks, errors, noise)
 
 
-def _refuse_edge(roots: Floats, name: str) -> None:
-    if roots[2] in (SLOW[0], SLOW[-1]):
+def _refuse_edge(roots: Floats, part: float, name: str) -> None:
+    """Refuse a slowest root on the edge if its factor moves the longest yield: `part` of that yield's deviation.
+
+    A curve of fewer roots leaves one over, which may sit anywhere and moves next to nothing.
+    """
+    if roots[2] in (SLOW[0], SLOW[-1]) and part > MATTERS:
         raise InferenceError(
-            f"{name}: the slowest root of its curve is {roots[2]}, the edge of what is tried ({SLOW[0]} to {SLOW[-1]}), "
-            "so the draws would not have its persistence; choose one-period errors"
+            f"{name}: the slowest root of its curve is {roots[2]}, the edge of {SLOW[0]} to {SLOW[-1]} tried, "
+            f"and moves {part:.0%} of its longest yield; draws would lack its persistence, choose one-period errors"
         )
 
 
