@@ -28,12 +28,16 @@ Errors = Literal[
     "classical",
     "robust",
     "bartlett",
+    "bartlett, fixed-b",
     "rectangular",
     "cosine",
     "one-period",
+    "instrument",
+    "instrument, cosine",
     "clustered: entity",
     "clustered: date",
     "clustered: both",
+    "clustered: both, lagged",
 ]
 Factor = Literal["none", "n/(n-k)", "clusters", "clusters, one factor"]
 Reference = Literal["normal", "t"]

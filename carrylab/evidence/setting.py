@@ -10,10 +10,11 @@ import numpy as np
 from carrylab.markets.parity import Parity
 from carrylab.regression.covariance import ErrorOptions, Errors, standard_errors
 from carrylab.regression.fit import Estimate
-from carrylab.regression.law import statistics
+from carrylab.regression.law import Statistics, statistics
 from carrylab.regression.sample import Floats, Sample
 
 Row = dict[str, Any]
+AWAY = {"one-period": "cosine", "instrument": "instrument, cosine"}  # errors under the null, and away from it
 EFFECTS = {
     "none": "no effects",
     "entity": "entity effects",
@@ -27,8 +28,8 @@ class Fit:
     """One group of one parity: sample, estimate and errors.
 
     `headline` are the errors the study chose. `away` are valid away from the null as well: equal to the headline,
-    or cosines where the headline imposes the null of no premium. `columns` are the entities of the pooled sample that
-    a group takes.
+    or cosines where the headline imposes the null of no premium. Both rest on the estimate of the headline, which is
+    the instrument's own where the study chose it. `columns` are the entities of the pooled sample that a group takes.
     """
 
     parity: Parity
@@ -81,14 +82,24 @@ class Fit:
 def errors_of(sample: Sample, estimate: Estimate, options: ErrorOptions) -> tuple[Errors, Errors]:
     """The errors asked for, and those that hold away from the null of no premium too."""
     headline = standard_errors(sample, estimate, options)
-    if "one-period" not in headline.kinds:
+    away = next((AWAY[kind] for kind in headline.kinds if kind in AWAY), None)
+    if away is None:
         return headline, headline
-    return headline, standard_errors(sample, estimate, replace(options, kind="cosine", factor=None, reference=None))
+    return headline, standard_errors(sample, estimate, replace(options, kind=away, factor=None, reference=None))
 
 
 def tested(value: float, error: float, null: float, df: float, confidence: float) -> Row:
-    """The columns of an estimate with its error, test and interval."""
-    found = statistics(value, error, null, df, confidence)
+    """The columns of an estimate with its error, test and interval by Student's t or the normal."""
+    return _columns(value, error, null, df, statistics(value, error, null, df, confidence))
+
+
+def judged(errors: Errors, leg: int, value: float, error: float, null: float, confidence: float) -> Row:
+    """The columns of an estimate with its error, test and interval by the law of one leg's errors."""
+    df, bandwidth = float(errors.df[leg]), float(errors.bandwidth[leg])
+    return _columns(value, error, null, df, statistics(value, error, null, df, confidence, bandwidth))
+
+
+def _columns(value: float, error: float, null: float, df: float, found: Statistics) -> Row:
     return {
         "estimate": value,
         "std_error": error,

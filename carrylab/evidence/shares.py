@@ -7,7 +7,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from carrylab.evidence.setting import Fit, Row, tested
+from carrylab.evidence.setting import AWAY, Fit, Row, judged
 from carrylab.markets.parity import Leg
 from carrylab.regression.covariance import Errors
 from carrylab.regression.law import critical
@@ -32,15 +32,16 @@ def share_rows(fit: Fit, *, drawn: bool = False) -> list[Row]:
 def parity_shares(fit: Fit) -> Shares:
     """Shares of a fit whose legs all have weights, with their influence series."""
     roles = [leg.role for leg in fit.parity.legs]
-    return shares(fit.estimate.coefficients[0], fit.estimate.influence[:, 0], fit.weights, roles)
+    estimate = fit.headline.estimate
+    return shares(estimate.coefficients[0], estimate.influence[:, 0], fit.weights, roles)
 
 
 def _coefficients(fit: Fit, errors: Errors, rank: str) -> Iterator[Row]:
-    for at, leg in enumerate(fit.parity.legs):
+    for at in range(len(fit.parity.legs)):
         for k, term in enumerate(fit.estimate.terms):
             row = _coefficient(fit, errors, (k, at), rank)
             if term == "signal":
-                row |= _of_signal(fit, leg, at)
+                row |= _of_signal(fit, errors, at)
             yield row
 
 
@@ -48,13 +49,13 @@ def _coefficient(fit: Fit, errors: Errors, where: tuple[int, int], rank: str) ->
     k, at = where
     leg, term = fit.parity.legs[at], fit.estimate.terms[k]
     null = _null(leg, fit.has_identity) if term == "signal" else 0.0
-    value, error = float(fit.estimate.coefficients[k, at]), float(errors.std_error[k, at])
+    value, error = float(errors.estimate.coefficients[k, at]), float(errors.std_error[k, at])
     return {
         "rank": rank,
         "leg": leg.name,
         "role": leg.role,
         "term": term,
-        **tested(value, error, null, float(errors.df[at]), fit.confidence),
+        **judged(errors, at, value, error, null, fit.confidence),
         "lags": errors.lags[at],
         "method": fit.method(errors, at),
     }
@@ -66,8 +67,8 @@ def _null(leg: Leg, identity: bool) -> float:
     return math.nan if identity else 0.0
 
 
-def _of_signal(fit: Fit, leg: Leg, at: int) -> Row:
-    value = float(fit.estimate.coefficients[0, at])
+def _of_signal(fit: Fit, errors: Errors, at: int) -> Row:
+    leg, value = fit.parity.legs[at], float(errors.estimate.coefficients[0, at])
     return {
         "weight": leg.weight,
         "share": None if leg.weight is None else leg.weight * value,
@@ -82,9 +83,9 @@ def _second_opinion(fit: Fit) -> list[Row]:
         return []
     rows = []
     for at, leg in enumerate(fit.parity.legs):
-        if fit.headline.kinds[at] == "one-period":
+        if fit.headline.kinds[at] in AWAY:
             row = _coefficient(fit, fit.away, (0, at), "second opinion")
-            rows.append(row | _of_signal(fit, leg, at))
+            rows.append(row | _of_signal(fit, fit.away, at))
             if leg.role == "return" and fit.has_identity:
                 premium = parity_shares(fit).premium
                 rows.append(row | {"term": "nothing paid", **_scaled(premium, fit.away, at, fit.confidence)})
@@ -111,7 +112,7 @@ def _quantities(fit: Fit) -> Iterator[Row]:
 
 def _scaled(premium: Quantity, errors: Errors, at: int, confidence: float) -> Row:
     error = abs(float(premium.gradient[at])) * float(errors.std_error[0, at])
-    return tested(premium.value, error, 0.0, float(errors.df[at]), confidence)
+    return judged(errors, at, premium.value, error, 0.0, confidence)
 
 
 def _slope_covariance(errors: Errors, legs: int) -> Floats:
@@ -126,7 +127,7 @@ def _combination(fit: Fit, quantity: Quantity) -> Row:
     at = int(np.flatnonzero(quantity.gradient)[0])
     return {
         "rank": "headline",
-        **tested(quantity.value, math.sqrt(max(variance, 0.0)), 0.0, float(fit.away.df[at]), fit.confidence),
+        **judged(fit.away, at, quantity.value, math.sqrt(max(variance, 0.0)), 0.0, fit.confidence),
         "lags": fit.away.lags[at],
         "method": fit.method(fit.away, at),
     }
@@ -142,7 +143,8 @@ def _resolved(fit: Fit, found: Shares) -> Row:
     row = _combination(fit, found.resolved) | {"term": "resolved premium share"}
     gradients = np.array([found.premium.gradient, -found.carried_over.gradient])
     covariance = gradients @ _slope_covariance(fit.away, len(fit.parity.legs)) @ gradients.T
-    reach = float(critical(fit.confidence, row["df"]))
+    first = int(np.flatnonzero(found.resolved.gradient)[0])
+    reach = float(critical(fit.confidence, row["df"], float(fit.away.bandwidth[first])))
     interval = ratio_interval(found.premium.value, 1.0 - found.carried_over.value, covariance, reach)
     note = "interval by inverting the linear restriction (Fieller 1954)"
     if interval.kind != "interval":

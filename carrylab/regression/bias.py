@@ -54,7 +54,7 @@ def window_warning(dates: int, overlap: int, kinds: Iterable[str]) -> tuple[str,
     if not overlap or windows >= FEW_WINDOWS:
         return ()
     text = f"{dates} dates hold only {windows} independent windows of {overlap + 1} periods"
-    if windows < VERY_FEW_WINDOWS and set(kinds) & {"bartlett", "rectangular"}:
+    if windows < VERY_FEW_WINDOWS and set(kinds) & {"bartlett", "bartlett, fixed-b", "rectangular"}:
         text += "; kernel errors are far too small here, do not rely on their p-values"
     return (text,)
 

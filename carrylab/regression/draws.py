@@ -9,7 +9,17 @@ from typing import Literal, Protocol
 import numpy as np
 
 from carrylab.errors import InferenceError
-from carrylab.regression.draws_measure import Design, Measures, Question, designs, measure, one_step_of
+from carrylab.regression.draws_measure import (
+    Design,
+    Kind,
+    Measures,
+    Question,
+    designs,
+    each,
+    joined,
+    measure,
+    one_step_of,
+)
 from carrylab.regression.draws_null import Null, dated_shocks, fit_null, pooled_shocks, shock_pool
 from carrylab.regression.sample import Floats, Ints, take
 
@@ -76,11 +86,11 @@ class Spread(Protocol):
 
     def __call__(
         self,
-        work: Callable[[np.random.Generator, int], Measures],
+        work: Callable[[np.random.Generator, int], Kind],
         streams: Iterable[np.random.Generator],
         counts: Iterable[int],
         /,
-    ) -> Iterable[Measures]:
+    ) -> Iterable[Kind]:
         """Results in the order of the chunks."""
 
 
@@ -110,7 +120,7 @@ def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resa
     drawn = joined(list(spread(one_chunk, streams, counts)), axis=1)
     return Draws(
         data=joined([one.data for one in prepared], axis=0),
-        draws=Measures(drawn.slope.T, drawn.one_period.T, drawn.cosine.T, drawn.r2.T),
+        draws=each(drawn, np.transpose),
         nulls=np.concatenate([np.full(len(case.groups), case.question.null) for case in cases]),
         fitted=tuple(one.null for one in prepared),
         scheme=scheme,
@@ -176,22 +186,12 @@ def measured(one: Prepared, picks: Picks) -> Measures:
     return joined(found, axis=0)
 
 
-def joined(parts: Sequence[Measures], *, axis: int) -> Measures:
-    """Measures one after the other along an axis."""
-    return Measures(
-        *(
-            np.concatenate([getattr(part, name) for part in parts], axis=axis)
-            for name in ("slope", "one_period", "cosine", "r2")
-        )
-    )
-
-
 def _on_data(case: Case, design: Design) -> Measures:
     """The statistics of one design's groups (H,) on the data themselves."""
     question, own = case.question, design.columns
     x, y = question.sample.x[:, own, :1].copy(), question.sample.y[:, own, question.leg, None].copy()
     found = measure(design, x, y, np.nan_to_num(_outcomes(case)[:, own, None]))
-    return Measures(found.slope[:, 0], found.one_period[:, 0], found.cosine[:, 0], found.r2[:, 0])
+    return each(found, lambda values: values[:, 0])
 
 
 def _outcomes(case: Case) -> Floats:

@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, fields
+from typing import TypeVar
 
 import numpy as np
 from scipy.sparse import csr_array
@@ -26,6 +28,34 @@ class Measures:
     one_period: Floats
     cosine: Floats
     r2: Floats
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class CurveMeasures:
+    """The signal's `slope`, its t against the null with `cosine` and with `bartlett` error of the overlap, and `r2`.
+
+    All of the same shape: (H,) on the data, (B, H) on draws.
+    """
+
+    slope: Floats
+    cosine: Floats
+    bartlett: Floats
+    r2: Floats
+
+
+Kind = TypeVar("Kind", Measures, CurveMeasures)
+
+
+def joined(parts: Sequence[Kind], *, axis: int) -> Kind:
+    """Measures one after the other along an axis."""
+    kind = type(parts[0])
+    return kind(*(np.concatenate([getattr(part, one.name) for part in parts], axis=axis) for one in fields(kind)))
+
+
+def each(found: Kind, change: Callable[[Floats], Floats]) -> Kind:
+    """The same measures with every array changed alike."""
+    kind = type(found)
+    return kind(*(change(getattr(found, one.name)) for one in fields(kind)))
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -110,9 +140,9 @@ def measure(design: Design, x: Floats, y: Floats, one: Floats) -> Measures:
     of x~ and u the outcomes after the effects are out. Cosine error: root of n/nu sum_j Lam_j^2 / Sxx, Lam_j of the
     date scores sum_i x~ (y~ - b x~).
     """
-    _take_out(x, design.mask, design.effects)
-    _take_out(y, design.mask, design.effects)
-    _take_out(one, design.there, design.effects)
+    take_out(x, design.mask, design.effects)
+    take_out(y, design.mask, design.effects)
+    take_out(one, design.there, design.effects)
     yy = np.einsum("tnb,tnb->nb", y, y)
     explained = _project(design, x, y)
     one *= (design.back @ x.reshape(len(x), -1)).reshape(x.shape)
@@ -129,7 +159,7 @@ def _of_group(
 
     `products` (T, n, B): x~ x~, x~ y~ and u W; `squares`: of y by entity (n, B), and what controls explain (B,).
     """
-    xx, xy, scores = (_summed(part, group.columns) for part in products)
+    xx, xy, scores = (summed(part, group.columns) for part in products)
     total, cross = xx.sum(axis=0), xy.sum(axis=0)
     slope = cross / total
     loads = group.cosines @ (xy[group.span] - slope * xx[group.span])
@@ -140,7 +170,7 @@ def _of_group(
     return slope, away / of_periods, away / of_cosines, r2
 
 
-def _summed(values: Floats, columns: Ints) -> Floats:
+def summed(values: Floats, columns: Ints) -> Floats:
     """Sum over the group's entities (T, B)."""
     if len(columns) == 1:
         return values[:, columns[0]]
@@ -148,7 +178,7 @@ def _summed(values: Floats, columns: Ints) -> Floats:
     return total
 
 
-def _take_out(values: Floats, mask: Bools, effects: Effects) -> None:
+def take_out(values: Floats, mask: Bools, effects: Effects) -> None:
     """Take the effects out of every draw (T, n, B) in place, zero outside the mask."""
     values *= mask[:, :, None]
     if effects == "entity":
@@ -188,11 +218,11 @@ def _design(question: Question, columns: Ints, groups: tuple[Ints, ...]) -> Desi
         ahead=ahead,
         back=back,
         controls=_controls(part, question.effects),
-        groups=tuple(_group(question, take(part, own), own) for own in groups),
+        groups=tuple(group_of(question, take(part, own), own) for own in groups),
     )
 
 
-def _group(question: Question, sample: Sample, columns: Ints) -> Group:
+def group_of(question: Question, sample: Sample, columns: Ints) -> Group:
     """The span and the scaled cosines, sqrt(2/nu) cos(pi j (t-1/2)/n), as the data's own influence sets them."""
     span = used_span(fit(sample, effects=question.effects).influence[:, :, question.leg])
     n = span.stop - span.start
@@ -206,6 +236,6 @@ def _controls(sample: Sample, effects: Effects) -> Floats:
     values = np.array(sample.x[:, :, 1:])
     if not values.shape[2]:
         return np.empty((sample.mask.size, 0))
-    _take_out(values, sample.mask, effects)
+    take_out(values, sample.mask, effects)
     basis: Floats = np.linalg.qr(values.reshape(sample.mask.size, -1))[0]
     return basis

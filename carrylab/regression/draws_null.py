@@ -83,12 +83,19 @@ def pooled_shocks(null: Null, pool: Ints) -> Floats:
     takes its k-th date that stands, and so round. So each entity keeps its own spread and the pairing of its
     two shocks, entities that miss the same dates stay together, and no date is drawn less often for a late start.
     """
-    pairs, both = null.pairs[pool], np.stack([null.outcome, null.signal])[:, pool]
-    for i in range(both.shape[2]):
-        own, missing = np.flatnonzero(pairs[:, i]), np.flatnonzero(~pairs[:, i])
-        both[:, missing, i] = both[:, own[np.arange(len(missing)) % len(own)], i]
-    centred: Floats = both - both.mean(axis=1, keepdims=True)
+    both = np.stack([null.outcome, null.signal], axis=2)[pool]
+    filled = repeated_in_turn(both, null.pairs[pool]).transpose(2, 0, 1)
+    centred: Floats = filled - filled.mean(axis=1, keepdims=True)
     return centred
+
+
+def repeated_in_turn(shocks: Floats, there: Bools) -> Floats:
+    """Shocks (D, N, .) in which an entity's k-th missing date takes its k-th date that stands, and so round."""
+    filled = shocks.copy()
+    for i in range(there.shape[1]):
+        own, missing = np.flatnonzero(there[:, i]), np.flatnonzero(~there[:, i])
+        filled[missing, i] = filled[own[np.arange(len(missing)) % len(own)], i]
+    return filled
 
 
 def dated_shocks(null: Null) -> Floats:

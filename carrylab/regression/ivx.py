@@ -70,7 +70,9 @@ def ivx(terms: Floats, outcome: Floats, *, horizon: int = 1) -> Ivx:
 
 def _require_whole(terms: Floats, outcome: Floats, horizon: int) -> None:
     if not (np.isfinite(terms).all() and np.isfinite(outcome[1:]).all()):
-        raise InferenceError("IVX of one series needs a series without holes; use the instrument with one-period scores")
+        raise InferenceError(
+            "IVX of one series needs a series without holes; use the instrument with one-period scores"
+        )
     if len(terms) - 1 < max(SHORTEST, 2 * horizon):
         raise InferenceError(
             f"IVX at {horizon} periods needs {max(SHORTEST, 2 * horizon)} one-period outcomes and there are "

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from carrylab.errors import InferenceError
-from carrylab.regression.clusters import ClusterFactor, Clustered, cluster_factor, counted_parameters, meats
+from carrylab.regression.clusters import Clustered, ClusterFactor, cluster_factor, counted_parameters, meats
 from carrylab.regression.effects import BLOCK
 from carrylab.regression.fit import Estimate
 from carrylab.regression.longrun import kernel_sum

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy import special
 
+from carrylab.regression import fixedb
 from carrylab.regression.sample import Floats
 
 
@@ -22,12 +23,18 @@ class Statistics:
 
 
 def statistics(
-    estimate: ArrayLike, std_error: ArrayLike, null: ArrayLike, df: ArrayLike, confidence: float
+    estimate: ArrayLike,
+    std_error: ArrayLike,
+    null: ArrayLike,
+    df: ArrayLike,
+    confidence: float,
+    bandwidth: float = 0.0,
 ) -> Statistics:
     """Two-sided test and interval by Student's t with `df` degrees of freedom, the normal where df is infinite.
 
-    Arguments broadcast. statistic = (estimate - null) / std_error; NaN where the error is zero, for then there is
-    no sampling variation to judge by, or where there is no null.
+    A `bandwidth` above zero, a part of the sample, means the fixed-b law instead. Arguments broadcast.
+    statistic = (estimate - null) / std_error; NaN where the error is zero, for then there is no sampling variation to
+    judge by, or where there is no null.
 
     >>> statistics(1.96, 1.0, 0.0, np.inf, 0.95).p_value.round(3).item()
     0.05
@@ -36,8 +43,10 @@ def statistics(
         *(np.asarray(part, float) for part in (estimate, std_error, null, df))
     )
     statistic = np.divide(value - at, error, out=np.full(value.shape, np.nan), where=error > 0)
-    reach = critical(confidence, freedom) * error
-    return Statistics(statistic, 2.0 * upper_tail(np.abs(statistic), freedom), value - reach, value + reach)
+    reach = critical(confidence, freedom, bandwidth) * error
+    size = np.abs(statistic)
+    p_value = fixedb.tail(size, bandwidth) if bandwidth else 2.0 * upper_tail(size, freedom)
+    return Statistics(statistic, p_value, value - reach, value + reach)
 
 
 def upper_tail(statistic: ArrayLike, df: ArrayLike) -> Floats:
@@ -47,9 +56,11 @@ def upper_tail(statistic: ArrayLike, df: ArrayLike) -> Floats:
     return np.asarray(np.where(np.isinf(freedom), special.ndtr(-value), student))
 
 
-def critical(confidence: float, df: ArrayLike) -> Floats:
-    """Two-sided critical value of Student's t, the normal where df is infinite."""
+def critical(confidence: float, df: ArrayLike, bandwidth: float = 0.0) -> Floats:
+    """Two-sided critical value of Student's t, the normal where df is infinite, fixed-b with a bandwidth above zero."""
     freedom = np.asarray(df, float)
+    if bandwidth:
+        return np.full(freedom.shape, fixedb.critical(confidence, bandwidth))
     level = 0.5 + confidence / 2.0
     student = special.stdtrit(np.where(np.isinf(freedom), 1.0, freedom), level)
     return np.asarray(np.where(np.isinf(freedom), special.ndtri(level), student))

@@ -31,7 +31,7 @@ def two_legs(h=4, T=120, seed=0, with_one=(True, False)):
 
 @pytest.mark.parametrize("kind", ERRORS)
 def test_every_kind_gives_errors_words_and_a_source(kind) -> None:
-    sample = random_sample(0) if kind != "one-period" else two_legs()
+    sample = random_sample(0) if kind not in ("one-period", "instrument") else two_legs()
     estimate = fit(sample, effects="entity")
     errors = standard_errors(sample, estimate, ErrorOptions(kind))
     assert (errors.std_error > 0).all()
