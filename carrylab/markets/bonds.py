@@ -16,47 +16,31 @@ from types import MappingProxyType
 
 import numpy as np
 
-from carrylab.data.calendar import MONTHS_IN, Calendar, Floats, Tenor, Window, lead, steps_in, window
+from carrylab.data.calendar import MONTHS_IN, Floats, Tenor, Window, lead, steps_in
 from carrylab.data.panel import curves
 from carrylab.data.read import MarketData
-from carrylab.errors import StudyError
+from carrylab.errors import DataError, StudyError
 from carrylab.markets.curves import YieldCurves
+from carrylab.markets.holding import Bonds, ahead, in_study, one_period_returns
 from carrylab.markets.parity import Entity, Leg, Parity
-from carrylab.markets.tenors import SAME, step_tenor
+from carrylab.markets.tenors import SAME
 
 CARRY_NOTE = "for a zero-coupon bond the return on an unchanged curve is the forward-spot spread"
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Built:
-    """Signal and legs (T, N) of one maturity."""
+    """Signal and legs (T, N) of one maturity; `note` says why it has no one-period returns."""
 
     signal: Floats
     legs: tuple[Leg, ...]
-
-
-@dataclass(frozen=True, eq=False, slots=True)
-class Bonds:
-    """The curves of one market, its data and options, and the currency of each economy."""
-
-    data: MarketData
-    curves: YieldCurves
-    economies: Mapping[str, str]
-
-    @property
-    def calendar(self) -> Calendar:
-        """The market's calendar."""
-        return self.data.calendar
-
-    def window(self, horizon: Tenor) -> Window:
-        """Where the outcomes of one horizon stand."""
-        return window(self.calendar, horizon, self.data.market.max_gap)
+    note: str = ""
 
 
 def parities(data: MarketData, economies: Mapping[str, str]) -> list[Parity]:
     """Every bond parity of the study: one a horizon, and one a maturity for the two distant ones.
 
-    Raises StudyError for a maturity or horizon that cannot be, DataError for a maturity that no rule gives.
+    Raises StudyError for a maturity or horizon that cannot be, DataError for a maturity that no rule gives an economy.
     """
     quoted = curves(data.tables["zero_yields"], data.calendar, "economy", "maturity")
     bonds = Bonds(data, YieldCurves(quoted, data.market), economies)
@@ -86,10 +70,10 @@ def _maturities(bonds: Bonds, above: Tenor) -> tuple[Tenor, ...]:
 
 def _near(bonds: Bonds, name: str, h: Tenor) -> Parity:
     _refuse_trading_days(bonds, "horizons", h)
-    bonds.curves.used.clear()
     maturities = _maturities(bonds, h)
     at = bonds.window(h)
-    built = [NEAR[name](bonds, n, h, at) for n in maturities]
+    bonds.curves.clear()
+    built = [_all_there(bonds, n, NEAR[name](bonds, n, h, at)) for n in maturities]
     return _parity(bonds, (name, h, at), maturities, built)
 
 
@@ -103,11 +87,22 @@ def _distant(bonds: Bonds, name: str) -> list[Parity]:
     _refuse_trading_days(bonds, "short", short)
     found = []
     for n in _maturities(bonds, short):
-        bonds.curves.used.clear()
         _require_whole(bonds, name, n, short)
         horizon = n - short
-        found.append(_parity(bonds, (name, horizon, bonds.window(horizon)), (n,), [DISTANT[name](bonds, n, short)]))
+        bonds.curves.clear()
+        built = _all_there(bonds, n, DISTANT[name](bonds, n, short))
+        found.append(_parity(bonds, (name, horizon, bonds.window(horizon)), (n,), [built]))
     return found
+
+
+def _all_there(bonds: Bonds, n: Tenor, built: Built) -> Built:
+    """What was built of the n-bond, if no economy lacks a maturity it needs."""
+    lacking = in_study(bonds, n, bonds.curves.lacking)
+    if lacking:
+        others = set(in_study(bonds, n, bonds.curves.quoted.codes)) - set(lacking)
+        raise DataError(bonds.curves.missing(lacking, [f"{code} {n}" for code in lacking if others]))
+    bonds.curves.lacking.clear()
+    return built
 
 
 def _refuse_trading_days(bonds: Bonds, key: str, length: Tenor) -> None:
@@ -136,8 +131,10 @@ def _parity(bonds: Bonds, what: tuple[str, Tenor, Window], maturities: tuple[Ten
     codes = bonds.curves.quoted.codes
     notes = [CARRY_NOTE] if name == "carry" else []
     if bonds.curves.used:
-        filled = ", ".join(sorted(bonds.curves.used))
-        notes.append(f"maturities not quoted ({filled}) are filled: {bonds.data.market.missing_maturity}")
+        notes.append(
+            f"maturities not quoted ({bonds.curves.filled()}) are filled: {bonds.data.market.missing_maturity}"
+        )
+    notes += dict.fromkeys(part.note for part in built if part.note)
     return Parity(
         market=bonds.data.market.name,
         name=name,
@@ -167,15 +164,16 @@ def forward_spot(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Built:
     price, rest = bonds.curves.price, n - h
     riskless = h.years * bonds.curves.yields(h)
     later = lead(bonds.curves.yields(rest), at)
+    excess = -rest.years * later - price(n) - riskless
+    rise = rest.years * (later - bonds.curves.yields(rest))
     steps = one_period_returns(bonds, n, h)
     return Built(
         price(rest) - price(n) - riskless,
         (
-            Leg("excess return", "return", -rest.years * later - price(n) - riskless, 1.0, 0.0, steps),
-            Leg(
-                "rate rise", "fundamental", rest.years * (later - bonds.curves.yields(rest)), 1.0, 1.0, _negated(steps)
-            ),
+            Leg("excess return", "return", excess, 1.0, 0.0, steps.values),
+            Leg("rate rise", "fundamental", rise, 1.0, 1.0, steps.times(-1.0)),
         ),
+        steps.note,
     )
 
 
@@ -188,6 +186,7 @@ def carry(bonds: Bonds, n: Tenor, h: Tenor, at: Window) -> Built:
     return Built(
         found.signal,
         (excess, Leg("price change beyond the carry", "fundamental", change, -1.0, -1.0, excess.one_step)),
+        found.note,
     )
 
 
@@ -198,13 +197,15 @@ def yield_spread(bonds: Bonds, n: Tenor, m: Tenor, at: Window) -> Built:
     later = lead(bonds.curves.yields(rest), at)
     excess = -rest.years * later - bonds.curves.price(n) - m.years * bonds.curves.yields(m)
     steps = one_period_returns(bonds, n, m)
-    share = None if steps is None else steps / rest.years
     return Built(
         scale * (bonds.curves.yields(n) - bonds.curves.yields(m)),
         (
-            Leg("excess return", "return", excess / rest.years, 1.0, 0.0, share),
-            Leg("long-rate rise", "fundamental", later - bonds.curves.yields(n), 1.0, 1.0, _negated(share)),
+            Leg("excess return", "return", excess / rest.years, 1.0, 0.0, steps.times(1 / rest.years)),
+            Leg(
+                "long-rate rise", "fundamental", later - bonds.curves.yields(n), 1.0, 1.0, steps.times(-1 / rest.years)
+            ),
         ),
+        steps.note,
     )
 
 
@@ -215,12 +216,14 @@ def forward_spot_far(bonds: Bonds, n: Tenor, k: Tenor) -> Built:
     later = lead(bonds.curves.yields(k), at)
     excess = -k.years * later - price(n) - rest.years * bonds.curves.yields(rest)
     rise = k.years * (later - bonds.curves.yields(k))
+    steps = one_period_returns(bonds, n, rest)
     return Built(
         price(rest) - price(n) - k.years * bonds.curves.yields(k),
         (
-            Leg("excess return", "return", excess, 1.0, 0.0),
-            Leg("rate rise", "fundamental", rise, 1.0, 1.0),
+            Leg("excess return", "return", excess, 1.0, 0.0, steps.values),
+            Leg("rate rise", "fundamental", rise, 1.0, 1.0, steps.times(-1.0)),
         ),
+        steps.note,
     )
 
 
@@ -231,48 +234,21 @@ def yield_spread_to_maturity(bonds: Bonds, n: Tenor, m: Tenor) -> Built:
     average = np.zeros_like(short)
     returns = np.zeros_like(short)
     for i in range(k):
-        average = average + _ahead(bonds, short, m.times(i)) / k
+        average = average + ahead(bonds, short, m.times(i)) / k
         if i < k - 1:
             left = n - m.times(i)
-            sold = _ahead(bonds, bonds.curves.price(left - m), m.times(i + 1))
-            bought = _ahead(bonds, bonds.curves.price(left), m.times(i))
-            returns = returns + (sold - bought - m.years * _ahead(bonds, short, m.times(i))) / n.years
+            sold = ahead(bonds, bonds.curves.price(left - m), m.times(i + 1))
+            bought = ahead(bonds, bonds.curves.price(left), m.times(i))
+            returns = returns + (sold - bought - m.years * ahead(bonds, short, m.times(i))) / n.years
+    steps = one_period_returns(bonds, n, m, rolls=k - 1)
     return Built(
         bonds.curves.yields(n) - short,
         (
-            Leg("average excess return", "return", returns, 1.0, 0.0),
-            Leg("average short-rate rise", "fundamental", average - short, 1.0, 1.0),
+            Leg("average excess return", "return", returns, 1.0, 0.0, steps.times(1 / n.years)),
+            Leg("average short-rate rise", "fundamental", average - short, 1.0, 1.0, steps.times(-1 / n.years)),
         ),
+        steps.note,
     )
-
-
-def _ahead(bonds: Bonds, values: Floats, by: Tenor) -> Floats:
-    return values if by == Tenor() else lead(values, bonds.window(by))
-
-
-def _negated(steps: Floats | None) -> Floats | None:
-    return None if steps is None else -steps
-
-
-def one_period_returns(bonds: Bonds, n: Tenor, h: Tenor) -> Floats | None:
-    """Excess returns of the bought bond period by period, (T, N, H) by origin and step; None where they are unknown.
-
-    In step s the n-bond has n - (s-1) steps left and the h-bond h - (s-1): its return less that of the h-bond. They
-    add up exactly to the excess return over h.
-    """
-    step = step_tenor(bonds.calendar)
-    averaged = any(table.source.timing == "average" for table in bonds.data.tables["zero_yields"])
-    if step is None or averaged:
-        return None
-    count = round(h.years / step.years)
-    if h != step.times(count):
-        return None
-    lives = [(n - step.times(s), h - step.times(s)) for s in range(count + 1)]
-    if not all(bonds.curves.quotes(life) for pair in lives for life in pair if life != Tenor()):
-        return None
-    price = bonds.curves.price
-    ahead = [_ahead(bonds, price(long) - price(short), step.times(s)) for s, (long, short) in enumerate(lives)]
-    return np.stack([ahead[s + 1] - ahead[s] for s in range(count)], axis=2)
 
 
 NEAR: Mapping[str, Callable[[Bonds, Tenor, Tenor, Window], Built]] = MappingProxyType(

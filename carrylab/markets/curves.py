@@ -2,41 +2,57 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from types import MappingProxyType
 
 import numpy as np
 from scipy.interpolate import CubicSpline
 
 from carrylab.data.calendar import Floats, Tenor
+from carrylab.data.files import shown
 from carrylab.data.panel import Curves
-from carrylab.errors import DataError
 from carrylab.markets.tenors import same_length
 from carrylab.options import Market
 
 
 class YieldCurves:
-    """Log zero yields (T, N, M) with the rule for maturities not quoted; `used` names those it filled since cleared."""
+    """Log zero yields (T, N, M) with the rule for maturities not quoted, on each economy's own quotes.
+
+    Since they were last cleared, `used` holds the economies of each maturity that the rule filled, and `lacking` the
+    first maturity of each economy that neither quotes nor the rule gave.
+    """
 
     def __init__(self, quoted: Curves, market: Market) -> None:
         self.quoted = quoted
         self.market = market
-        self.used: set[str] = set()
+        self.used: dict[Tenor, list[str]] = {}
+        self.lacking: dict[str, Tenor] = {}
+        self._alike = quoted.alike()
         self._known: dict[float, Floats] = {}
 
-    def quotes(self, maturity: Tenor) -> bool:
-        """Whether this maturity is quoted or the rule can fill it."""
-        years = self.quoted.years
-        fills = self.market.missing_maturity != "exact" and years[0] < maturity.years < years[-1]
-        return bool(fills) or same_length(self.quoted, maturity.years) is not None
+    def clear(self) -> None:
+        """Forget which maturities were filled and which are lacking."""
+        self.used.clear()
+        self.lacking.clear()
+
+    def lacks(self, maturity: Tenor) -> list[str]:
+        """Economies with yields of which this maturity is neither quoted nor can be filled."""
+        return [code for own in self._alike if own.tenors and not self._stands(own, maturity) for code in own.codes]
+
+    def _stands(self, own: Curves, maturity: Tenor) -> bool:
+        fills = self.market.missing_maturity != "exact" and own.tenors
+        between = bool(fills) and own.years[0] < maturity.years < own.years[-1]
+        return between or same_length(own, maturity.years) is not None
 
     def yields(self, maturity: Tenor) -> Floats:
-        """Log yield per year (T, N) of one maturity; DataError where neither quotes nor the rule give it."""
+        """Log yield per year (T, N) of one maturity, a hole for economies that lack it."""
         key = round(maturity.years, 9)
         if key not in self._known:
             self._known[key] = self._find(maturity)
-        if same_length(self.quoted, maturity.years) is None:
-            self.used.add(maturity.canonical)
+        self.lacking = dict.fromkeys(self.lacks(maturity), maturity) | self.lacking
+        for own in self._alike:
+            if self._stands(own, maturity) and same_length(own, maturity.years) is None:
+                self.used[maturity] = sorted({*self.used.get(maturity, ()), *own.codes})
         return self._known[key]
 
     def price(self, maturity: Tenor) -> Floats:
@@ -46,21 +62,37 @@ class YieldCurves:
         return -maturity.years * self.yields(maturity)
 
     def _find(self, maturity: Tenor) -> Floats:
-        same = same_length(self.quoted, maturity.years)
-        if same is not None:
-            return self.quoted.values[:, :, self.quoted.tenors.index(same)]
-        if not self.quotes(maturity):
-            raise DataError(self._missing(maturity))
-        return RULES[self.market.missing_maturity](self.quoted.years, self.quoted.values, maturity.years)
+        found = np.full(self.quoted.values.shape[:2], np.nan)
+        for own in self._alike:
+            same = same_length(own, maturity.years)
+            at = [self.quoted.codes.index(code) for code in own.codes]
+            if same is not None:
+                found[:, at] = own.values[:, :, own.tenors.index(same)]
+            elif self._stands(own, maturity):
+                found[:, at] = RULES[self.market.missing_maturity](own.years, own.values, maturity.years)
+        return found
 
-    def _missing(self, maturity: Tenor) -> str:
-        names = [str(tenor) for tenor in self.quoted.tenors]
+    def filled(self) -> str:
+        """The maturities that the rule filled, in words; the economies where it did not fill all."""
+        parts = [
+            tenor.canonical + ("" if len(codes) == len(self.quoted.codes) else f" of {' and '.join(codes)}")
+            for tenor, codes in sorted(self.used.items())
+        ]
+        return shown(parts)
+
+    def missing(self, codes: Sequence[str], bonds: Sequence[str]) -> str:
+        """One line on the first of the economies that lack a maturity; `bonds` are the entities one may leave out."""
+        (own,) = (one for one in self._alike if codes[0] in one.codes)
+        names = [str(tenor) for tenor in own.tenors]
         known = ", ".join(names) if len(names) <= 12 else f"{names[0]} to {names[-1]} ({len(names)} maturities)"
+        also = f" (and for {shown(codes[1:])})" if len(codes) > 1 else ""
         rules = '"linear in yield", "flat forward" or "cubic in yield"'
+        out = f"add {', '.join(map(repr, bonds))} to leave_out, " if bonds else ""
         return (
-            f"market {self.market.name!r}: no yield of maturity {maturity}; quoted are {known}, missing_maturity is "
-            f"{self.market.missing_maturity!r}; quote it, choose other maturities or horizons, or set missing_maturity "
-            f"to {rules}, which fill between the quoted ones only"
+            f"market {self.market.name!r}: no yield of maturity {self.lacking[codes[0]]} for {codes[0]}{also}, which "
+            f"quotes {known}; missing_maturity is {self.market.missing_maturity!r}; quote it, choose other maturities "
+            f"or horizons, {out}or set missing_maturity to {rules}, which fill between the quoted "
+            "ones only"
         )
 
 

@@ -7,7 +7,9 @@ import pytest
 from markets_built import CASES, built, leg, market, one, random_market, steps_summed, table
 
 from carrylab.data.calendar import parse_tenor
+from carrylab.data.panel import Curves
 from carrylab.errors import DataError, StudyError
+from carrylab.markets.curves import YieldCurves
 
 # Yearly data, log yields. Prices p = -n y, in percent:
 #   year   y1   y2   y3     p1   p2    p3
@@ -167,17 +169,98 @@ def test_a_month_of_a_bond_held_two() -> None:
     assert 12 * parity.legs[0].values[0, 0] == pytest.approx(0.076, abs=1e-15)
 
 
+QUARTER = {("EA", f"{n}m"): [0.01 * n, 0.012 * n, 0.011 * n, 0.014 * n] for n in (1, 2, 3)}
+
+
+def test_the_months_of_a_return_held_until_the_forward_rate_stands() -> None:
+    yields = table("zero_yields", "economy maturity", QUARTER)
+    parity = one(market("bonds", "forward-spot-far", yields, short="1m", maturities="3m"))
+    # In percent, 12 p(n) = -n y(n). The 3m over the 2m bond: [-2 (2.4) + 1.2] - [-3 (3) + 2 (2)] = 1.4, then the 2m
+    # over the 1m bond, which is paid back: -1.1 - [-2 (2.4) + 1.2] = 2.5.
+    np.testing.assert_allclose(12 * parity.legs[0].one_step[0, 0], [0.014, 0.025], atol=1e-15)
+    assert 12 * parity.legs[0].values[0, 0] == pytest.approx(0.039, abs=1e-15)
+    np.testing.assert_array_equal(parity.legs[1].one_step, -parity.legs[0].one_step)
+
+
+def test_the_months_of_a_return_over_rolling_bonds() -> None:
+    yields = table("zero_yields", "economy maturity", QUARTER)
+    parity = one(market("bonds", "yield-spread-to-maturity", yields, short="1m", maturities="3m"))
+    # The 3m over a 1m bond: -2 (2.4) - [-3 (3) + 1] = 3.2; then the 2m over the next 1m bond: -1.1 - [-2 (2.4) + 1.2]
+    # = 2.5, as twelfths of a percent; over the three months of its life.
+    np.testing.assert_allclose(3 * parity.legs[0].one_step[0, 0], [0.032, 0.025], atol=1e-15)
+    assert 3 * parity.legs[0].values[0, 0] == pytest.approx(0.057, abs=1e-15)
+
+
+MONTHS = tuple(range(1, 25))
+
+
 @pytest.mark.parametrize(
-    ("months", "declared", "horizon"),
+    ("months", "declared", "note"),
     [
-        ((12, 24), {}, "12m"),  # the months between are not quoted
-        (tuple(range(1, 25)), {"timing": "average"}, "12m"),  # changes of averages are no news of one period
+        (
+            (1, *range(12, 25)),
+            {},
+            "yields of every month of a bond's life are not quoted (2m is missing): no one-period errors",
+        ),
+        (MONTHS, {"timing": "average"}, "yields are period averages, so there are no one-period errors"),
+        (MONTHS, {"interval": "week"}, "returns over 12m are not made of weeks, so there are no one-period errors"),
+        (MONTHS, {"interval": "day"}, "returns over 12m are not made of days, so there are no one-period errors"),
     ],
 )
-def test_where_one_period_returns_are_unknown_there_are_none(months, declared, horizon) -> None:
+def test_where_one_period_returns_are_unknown_there_are_none(months, declared, note) -> None:
+    interval = declared.get("interval", "month")
     yields = table("zero_yields", "economy maturity", {("EA", f"{n}m"): [0.01] * 30 for n in months}, **declared)
-    parity = one(market("bonds", "forward-spot", yields, horizons=horizon, maturities="24m"))
+    data = market("bonds", "forward-spot", yields, interval=interval, horizons="12m", maturities="24m")
+    parity = one(data)
     assert [leg.one_step for leg in parity.legs] == [None, None]
+    assert parity.notes == (note,)
+
+
+def uneven():
+    """EA quotes every year to the fourth, EB not the second."""
+    quoted = {("EA", f"{12 * n}m"): [0.01 * n] * 3 for n in (1, 2, 3, 4)}
+    quoted |= {("EB", f"{12 * n}m"): [0.02 * n] * 3 for n in (1, 3, 4)}
+    return table("zero_yields", "economy maturity", quoted, interval="year")
+
+
+def test_every_economy_is_filled_between_its_own_maturities() -> None:
+    options = {"interval": "year", "horizons": "1y", "missing_maturity": "linear in yield"}
+    parity = one(market("bonds", "yield-spread", uneven(), maturities="2y", **options))
+    # Halfway between 2 and 6 percent, less 2.
+    np.testing.assert_allclose(parity.signal[0], [0.01, 0.02], atol=1e-15)
+    assert parity.notes[0] == "maturities not quoted (24m of EB) are filled: linear in yield"
+
+
+def test_an_economy_without_any_yield_lacks_none() -> None:
+    tenors = (parse_tenor("12m"), parse_tenor("24m"))
+    quoted = Curves(("EA", "EC"), tenors, np.array([[[0.01, 0.02], [math.nan, math.nan]]]))
+    curves = YieldCurves(quoted, market("bonds", "forward-spot", uneven()).market)
+    np.testing.assert_array_equal(curves.yields(tenors[1]), [[0.02, math.nan]])
+    assert curves.lacks(tenors[1]) == []
+    assert curves.lacks(parse_tenor("36m")) == ["EA"]
+
+
+def test_an_economy_without_a_maturity_is_named_with_what_it_quotes() -> None:
+    with pytest.raises(DataError) as refused:
+        built(market("bonds", "forward-spot", uneven(), interval="year", horizons="1y", maturities="3y 4y"))
+    assert str(refused.value) == (
+        "market 'M': no yield of maturity 24m for EB, which quotes 12m, 36m, 48m; missing_maturity is 'exact'; quote "
+        "it, choose other maturities or horizons, add 'EB 3y' to leave_out, or set missing_maturity to \"linear in "
+        'yield", "flat forward" or "cubic in yield", which fill between the quoted ones only'
+    )
+
+
+@pytest.mark.parametrize("out", ["EB 3y", "EB", "BBB"])
+def test_a_bond_left_out_needs_no_maturity(out: str) -> None:
+    data = market(
+        "bonds", "forward-spot", uneven(), interval="year", horizons="1y", maturities="3y 4y", leave_out=(out,)
+    )
+    parity = one(data)
+    assert [entity.name for entity in parity.entities] == ["EA 3y", "EB 3y", "EA 4y", "EB 4y"]
+    # The bond of four years needs three and one only, so it stands and has its returns year by year.
+    np.testing.assert_array_equal(np.isnan(parity.signal[0]), [False, True, False, False])
+    assert parity.legs[0].one_step.shape == (3, 4, 1)
+    assert parity.notes == ()
 
 
 WEEKS = {("EA", f"{n}m"): [0.01, 0.02, 0.03] for n in (1, 12)}
@@ -203,7 +286,8 @@ WEEKS = {("EA", f"{n}m"): [0.01, 0.02, 0.03] for n in (1, 12)}
             "forward-spot",
             {"horizons": "1y", "maturities": "5y"},
             DataError,
-            "market 'M': no yield of maturity 48m; quoted are 12m, 24m, 36m, missing_maturity is 'exact'; quote it",
+            "market 'M': no yield of maturity 48m for EA, which quotes 12m, 24m, 36m; missing_maturity is 'exact'; "
+            "quote it, choose other maturities or horizons, or set missing_maturity to",
         ),
         (
             "forward-spot",

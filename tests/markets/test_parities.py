@@ -85,10 +85,7 @@ def test_what_comes_after_a_date_does_move_legs_that_have_not_ended(case: Case) 
         assert any((old.values[open_rows] != new.values[open_rows]).any() for old, new in pairs)
 
 
-TELESCOPING = [case for case in CASES if case.kind == "bonds" and "short" not in case.options]
-
-
-@pytest.mark.parametrize("case", TELESCOPING, ids=str)
+@pytest.mark.parametrize("case", [case for case in CASES if case.kind == "bonds"], ids=str)
 def test_one_period_bond_returns_telescope_exactly(case: Case) -> None:
     """They add up to leg - null x signal of each leg, so nothing but the null is assumed."""
     for parity in built(random_market(case, 3)):
