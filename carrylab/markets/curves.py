@@ -14,6 +14,8 @@ from carrylab.data.panel import Curves
 from carrylab.markets.tenors import same_length
 from carrylab.options import Market
 
+POINTS: Mapping[str, int] = MappingProxyType({"linear in yield": 2, "flat forward": 2, "cubic in yield": 3})
+
 
 class YieldCurves:
     """Log zero yields (T, N, M) with the rule for maturities not quoted, on each economy's own quotes.
@@ -40,9 +42,9 @@ class YieldCurves:
         return [code for own in self._alike if own.tenors and not self._stands(own, maturity) for code in own.codes]
 
     def _stands(self, own: Curves, maturity: Tenor) -> bool:
-        fills = self.market.missing_maturity != "exact" and own.tenors
-        between = bool(fills) and own.years[0] < maturity.years < own.years[-1]
-        return between or same_length(own, maturity.years) is not None
+        fills = len(own.tenors) >= POINTS.get(self.market.missing_maturity, np.inf)
+        between = fills and own.years[0] < maturity.years < own.years[-1]
+        return bool(between) or same_length(own, maturity.years) is not None
 
     def yields(self, maturity: Tenor) -> Floats:
         """Log yield per year (T, N) of one maturity, a hole for economies that lack it."""
@@ -86,7 +88,7 @@ class YieldCurves:
         names = [str(tenor) for tenor in own.tenors]
         known = ", ".join(names) if len(names) <= 12 else f"{names[0]} to {names[-1]} ({len(names)} maturities)"
         also = f" (and for {shown(codes[1:])})" if len(codes) > 1 else ""
-        rules = '"linear in yield", "flat forward" or "cubic in yield"'
+        rules = '"linear in yield", "flat forward" or "cubic in yield" (of three or more)'
         out = f"add {', '.join(map(repr, bonds))} to leave_out, " if bonds else ""
         return (
             f"market {self.market.name!r}: no yield of maturity {self.lacking[codes[0]]} for {codes[0]}{also}, which "
@@ -116,7 +118,7 @@ def cubic_in_yield(years: Floats, yields: Floats, wanted: float) -> Floats:
     flat, flat_found = yields.reshape(-1, len(years)), found.reshape(-1)
     for number, pattern in enumerate(patterns):
         own = years[pattern]
-        if len(own) < 3 or not own[0] < wanted < own[-1]:
+        if len(own) < POINTS["cubic in yield"] or not own[0] < wanted < own[-1]:
             continue
         rows = which.ravel() == number
         flat_found[rows] = CubicSpline(own, flat[rows][:, pattern], axis=1, bc_type="natural")(wanted)

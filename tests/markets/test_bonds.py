@@ -231,6 +231,14 @@ def test_every_economy_is_filled_between_its_own_maturities() -> None:
     assert parity.notes[0] == "maturities not quoted (24m of EB) are filled: linear in yield"
 
 
+def test_a_spline_needs_three_maturities() -> None:
+    two = {("EA", "12m"): [0.02, 0.02], ("EA", "36m"): [0.04, 0.04]}
+    yields = table("zero_yields", "economy maturity", two, interval="year")
+    options = {"interval": "year", "horizons": "1y", "maturities": "2y"}
+    with pytest.raises(DataError, match="no yield of maturity 2y for EA, which quotes 12m, 36m"):
+        built(market("bonds", "yield-spread", yields, missing_maturity="cubic in yield", **options))
+
+
 def test_an_economy_without_any_yield_lacks_none() -> None:
     tenors = (parse_tenor("12m"), parse_tenor("24m"))
     quoted = Curves(("EA", "EC"), tenors, np.array([[[0.01, 0.02], [math.nan, math.nan]]]))
@@ -246,7 +254,7 @@ def test_an_economy_without_a_maturity_is_named_with_what_it_quotes() -> None:
     assert str(refused.value) == (
         "market 'M': no yield of maturity 24m for EB, which quotes 12m, 36m, 48m; missing_maturity is 'exact'; quote "
         "it, choose other maturities or horizons, add 'EB 3y' to leave_out, or set missing_maturity to \"linear in "
-        'yield", "flat forward" or "cubic in yield", which fill between the quoted ones only'
+        'yield", "flat forward" or "cubic in yield" (of three or more), which fill between the quoted ones only'
     )
 
 
@@ -294,8 +302,8 @@ WEEKS = {("EA", f"{n}m"): [0.01, 0.02, 0.03] for n in (1, 12)}
             {"horizons": "1y", "maturities": "5y", "missing_maturity": "flat forward"},
             DataError,
             "missing_maturity is 'flat forward'; quote it, choose other maturities or horizons, or set "
-            'missing_maturity to "linear in yield", "flat forward" or "cubic in yield", which fill between the '
-            "quoted ones only",
+            'missing_maturity to "linear in yield", "flat forward" or "cubic in yield" (of three or more), which '
+            "fill between the quoted ones only",
         ),
         (
             "yield-spread-to-maturity",
