@@ -13,11 +13,13 @@ from carrylab.audit import audit as audit_samples
 from carrylab.data.asof import as_of
 from carrylab.data.calendar import Tenor, parse_tenor
 from carrylab.data.checks import Check, check_market
+from carrylab.data.panel import curves
 from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
 from carrylab.evidence.drawn import drawable, drawn_rows
+from carrylab.evidence.drawn_curves import CurveRows, curve_rows
 from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
 from carrylab.evidence.setting import Fit, Row, errors_of
@@ -26,6 +28,7 @@ from carrylab.evidence.summary import summary_rows
 from carrylab.findings import to_frame
 from carrylab.markets import MARKETS
 from carrylab.markets.columns import predictor
+from carrylab.markets.curves import YieldCurves
 from carrylab.markets.parity import Entity, Leg, Parity, identity
 from carrylab.markets.proof import identity_check
 from carrylab.options import Inference, Market, Study
@@ -191,10 +194,11 @@ def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
     inference = built.market.inference
     prepared = [(parity, *sample_of(parity, built.data)) for parity in built.parities]
     families = [tuple(_fits(parity, sample, built.market)) for parity, sample, _ in prepared]
-    rows: list[Row] = drawn_rows(families, inference.draws, inference.seed)
-    said = (AVERAGED,) if is_averaged(built.data) else ()
+    rows, by_curves = _drawn(built, families)
+    said = [AVERAGED] if is_averaged(built.data) else []
+    said += [by_curves.refused] if by_curves.refused else []
     for family, (parity, _, terms) in zip(families, prepared, strict=True):
-        drawn = bool(inference.draws) and drawable(family[0])
+        drawn = bool(inference.draws) and (drawable(family[0]) or parity.name in by_curves.parities)
         rows += [row for one in family for row in (*share_rows(one, drawn=drawn), *summary_rows(one, said))]
         rows += group_rows(family[1:])
         rows += regression_ledger_rows(family[0])
@@ -202,6 +206,17 @@ def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
         rows += _other_rho(parity, built, economies)
     fits = tuple(one for family in families for one in family)
     return Fitted(fits, tuple((one.sample.label, one.sample) for one in fits), tuple(rows))
+
+
+def _drawn(built: Built, families: list[tuple[Fit, ...]]) -> tuple[list[Row], CurveRows]:
+    """Rows of the draws under the null: of whole curves for bonds, of returns and signals for all else."""
+    market = built.market
+    count, seed = market.inference.draws, market.inference.seed
+    if market.kind != "bonds" or not count:
+        return drawn_rows(families, count, seed), CurveRows([], frozenset(), "")
+    quoted = curves(built.data.tables["zero_yields"], built.data.calendar, "economy", "maturity")
+    by_curves = curve_rows(families, YieldCurves(quoted, market), count, seed)
+    return by_curves.rows, by_curves
 
 
 def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:

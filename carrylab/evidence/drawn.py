@@ -48,7 +48,12 @@ def drawn_rows(families: Sequence[Sequence[Fit]], count: int, seed: int) -> list
     with ThreadPoolExecutor(WORKERS) as pool:
         found = draw([_case(family) for family in chosen], count, seed=seed, spread=pool.map)
     said = _said(found, chosen[0][0].confidence)
-    fits = [fit for family in chosen for fit in family]
+    return rows_of(chosen, said)
+
+
+def rows_of(families: Sequence[Sequence[Fit]], said: Drawn) -> list[Row]:
+    """Rows of every fit of the families, in the order of the hypotheses that were drawn."""
+    fits = [fit for family in families for fit in family]
     return [row for h, fit in enumerate(fits) for row in _rows(fit, said, h)]
 
 
@@ -59,10 +64,10 @@ def _case(family: Sequence[Fit]) -> Case:
     assert at is not None
     question = Question(pooled.sample, at, pooled.parity.legs[at].null or 0.0, pooled.estimate.effects)
     names = tuple(entity.name for entity in pooled.parity.entities)
-    return Case(question, pooled.parity.signal, tuple(_columns(pooled, fit) for fit in family), names)
+    return Case(question, pooled.parity.signal, tuple(columns_of(pooled, fit) for fit in family), names)
 
 
-def _columns(pooled: Fit, fit: Fit) -> Ints:
+def columns_of(pooled: Fit, fit: Fit) -> Ints:
     """Columns of the pooled sample that a group's fit takes."""
     if fit is pooled:
         return np.arange(pooled.sample.mask.shape[1])
@@ -71,14 +76,23 @@ def _columns(pooled: Fit, fit: Fit) -> Ints:
 
 def _said(found: Draws, confidence: float) -> Drawn:
     data, draws = found.data, found.draws
+    slopes = (data.slope, draws.slope, found.nulls)
+    words = f"equal-tailed p of the one-period t, {found.words}"
+    return summed_up(slopes, (data.one_period, draws.one_period), draws.r2, confidence, words)
+
+
+def summed_up(
+    slopes: tuple[Floats, Floats, Floats], t: tuple[Floats, Floats], r2: Floats, confidence: float, words: str
+) -> Drawn:
+    """What draws say: `slopes` on the data (H,), on the draws (B, H) and under the null (H,); `t` on data and draws."""
     return Drawn(
-        p_value=equal_tailed(data.one_period, draws.one_period),
-        slope=bias_corrected(data.slope, draws.slope, found.nulls),
-        adjusted=stepdown(*rarity(data.one_period, draws.one_period)),
-        slope_band=band(draws.slope, confidence),
-        r2_band=upper_band(draws.r2),
-        statistic=data.one_period,
-        words=found.words,
+        p_value=equal_tailed(*t),
+        slope=bias_corrected(*slopes),
+        adjusted=stepdown(*rarity(*t)),
+        slope_band=band(slopes[1], confidence),
+        r2_band=upper_band(r2),
+        statistic=t[0],
+        words=words,
     )
 
 
@@ -86,7 +100,7 @@ def _rows(fit: Fit, said: Drawn, h: int) -> list[Row]:
     at = fit.leg_of("return")
     assert at is not None
     leg = fit.parity.legs[at]
-    method = f"{EFFECTS[fit.estimate.effects]}; equal-tailed p of the one-period t, {said.words}"
+    method = f"{EFFECTS[fit.estimate.effects]}; {said.words}"
     place = fit.place() | {"leg": leg.name, "role": leg.role}
     slope = float(fit.estimate.coefficients[0, at])
     test = {

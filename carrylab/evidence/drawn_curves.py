@@ -1,0 +1,107 @@
+"""Draws of whole yield curves under the expectations hypothesis behind the tests of bonds."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+import numpy as np
+
+from carrylab.data.calendar import Tenor, horizon_years, parse_tenor, steps_in
+from carrylab.errors import InferenceError
+from carrylab.evidence.drawn import WORKERS, Drawn, columns_of, rows_of, summed_up
+from carrylab.evidence.setting import Fit, Row
+from carrylab.markets.curves import YieldCurves
+from carrylab.markets.tenors import step_tenor
+from carrylab.regression.draws_curve import Claims, CurveDraws, Curves, draw_curves, forward_spot_claims
+from carrylab.regression.draws_measure import Question
+from carrylab.regression.sample import Floats, Ints
+
+DRAWN = ("forward-spot", "yield-spread", "carry")
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class CurveRows:
+    """Rows from draws of curves, the parities they stand for, and why there are none where there are none."""
+
+    rows: list[Row]
+    parities: frozenset[str]
+    refused: str
+
+
+def curve_rows(families: Sequence[Sequence[Fit]], curves: YieldCurves, count: int, seed: int) -> CurveRows:
+    """Rows for the bond parities of one horizon each whose signals and returns are sums of yields, drawn together."""
+    chosen = [family for family in families if family[0].parity.name in DRAWN]
+    step = step_tenor(chosen[0][0].parity.calendar) if chosen else None
+    if not count or step is None:
+        return CurveRows([], frozenset(), "")
+    try:
+        quoted = _curves(chosen, curves, step)
+        with ThreadPoolExecutor(WORKERS) as pool:
+            cases = [_claims(family, quoted, step) for family in chosen]
+            found = draw_curves(quoted, cases, count, seed=seed, spread=pool.map)
+    except InferenceError as refused:
+        return CurveRows([], frozenset(), f"no draws of yield curves: {refused}")
+    said = _said(found, chosen[0][0].confidence)
+    return CurveRows(rows_of(chosen, said), frozenset(family[0].parity.name for family in chosen), "")
+
+
+def _periods(length: Tenor, fit: Fit) -> int:
+    """A length in periods of the fit's calendar."""
+    steps = steps_in(length, fit.parity.calendar.interval)
+    if steps is None:
+        raise InferenceError(f"{length} is no whole number of {fit.parity.calendar.interval}s")
+    return steps
+
+
+def _curves(families: Sequence[Sequence[Fit]], curves: YieldCurves, step: Tenor) -> Curves:
+    """Yields of every maturity the parities use, and the shortest quoted, for the economies in the fits."""
+    first = families[0][0]
+    economies = tuple(dict.fromkeys(e.economy for family in families for e in family[0].parity.entities))
+    wanted = {_periods(curves.quoted.tenors[0], first)}
+    for family in families:
+        h = family[0].parity.horizon
+        for entity in family[0].parity.entities:
+            n = parse_tenor(entity.maturity)
+            wanted |= {_periods(length, first) for length in (h, n, n - h)}
+    columns = [curves.quoted.codes.index(code) for code in economies]
+    maturities = np.array(sorted(wanted), dtype=np.int64)
+    yields = np.stack([curves.yields(step.times(int(n)))[:, columns] for n in maturities], axis=2)
+    return Curves(yields, maturities, economies)
+
+
+def _claims(family: Sequence[Fit], curves: Curves, step: Tenor) -> Claims:
+    """The pooled fit as claims on curves: what its signals and returns are in yields."""
+    pooled = family[0]
+    at = pooled.leg_of("return")
+    assert at is not None
+    parity = pooled.parity
+    long: Ints = np.array([_periods(parse_tenor(e.maturity), pooled) for e in parity.entities], dtype=np.int64)
+    holding = _periods(parity.horizon, pooled)
+    years = horizon_years(step, parity.calendar.interval)
+    signal, now, later = forward_spot_claims(curves.maturities, long, holding, years)
+    if parity.name == "yield-spread":
+        left = ((long - holding) * years)[:, None]
+        signal = _spread_weights(curves.maturities, long, holding)
+        now, later = now / left, later / left
+    question = Question(pooled.sample, at, parity.legs[at].null or 0.0, pooled.estimate.effects)
+    economy: Ints = np.array([curves.economies.index(e.economy) for e in parity.entities], dtype=np.int64)
+    return Claims(question, tuple(columns_of(pooled, fit) for fit in family), economy, signal, now, later)
+
+
+def _spread_weights(maturities: Ints, long: Ints, holding: int) -> Floats:
+    """Weights (E, M) of m/(n-m) [y(n) - y(m)] on today's yields."""
+    weights = np.zeros((len(long), len(maturities)))
+    for e, n in enumerate(long):
+        scale = holding / (n - holding)
+        weights[e, maturities == n] = scale
+        weights[e, maturities == holding] = -scale
+    return weights
+
+
+def _said(found: CurveDraws, confidence: float) -> Drawn:
+    data, draws = found.data, found.draws
+    slopes = (data.slope, draws.slope, np.zeros_like(data.slope))
+    words = f"equal-tailed p of the cosine t, {found.words}"
+    return summed_up(slopes, (data.cosine, draws.cosine), draws.r2, confidence, words)
