@@ -74,6 +74,7 @@ def test_the_routines_use_numpy_and_scipy_only(path: Path) -> None:
         "carrylab",
         "collections",
         "dataclasses",
+        "functools",
         "itertools",
         "math",
         "numpy",
