@@ -1,4 +1,4 @@
-"""Clusters with lags of common shocks: the formula in plain loops, its limits, and what replaces a negative variance."""
+"""Clusters with lags of common shocks: the formula in plain loops, its limits, and what replaces a bad variance."""
 
 import numpy as np
 import pytest
@@ -38,7 +38,7 @@ def common(seed, legs=1, controls=0):
 
 
 def test_by_hand() -> None:
-    # two entities, three dates, no effects, x in two blocks so that its mean is 0: x = (1, -1), (1, -1), (1, -1), A = 6.
+    # two entities, three dates, no effects, x of mean 0: (1, -1) at each date, A = 6.
     # y = (1, 1), (-1, 0), (3, 2): Sxy = 0 - 1 + 1 = 0, b = 0, mean 1; e = y - 1 = (0, 0), (-2, -1), (2, 1).
     # q = x e: (0, 0), (-2, 1), (2, -1); s = 0, -1, 1.
     # V_E = 0 + 0, V_D = 2, V_W = 10; lag 1: s_3 s_2 = -1, own = -4 - 1 = -5: 2 (-1 + 5) = 8. V = 0 + 2 - 10 + 8 = 0,
