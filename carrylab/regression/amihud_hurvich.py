@@ -11,7 +11,7 @@ from carrylab.errors import InferenceError
 from carrylab.regression.sample import Bools, Floats
 
 CAP = 0.9999  # a corrected persistence of one or more is set to it
-FEWEST = 8  # pairs of dates; four coefficients and their variances are estimated from them
+FEWEST = 4  # pairs of dates: three coefficients and a variance
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,7 +39,7 @@ def amihud_hurvich(signal: Floats, outcome: Floats) -> AmihudHurvich:
     se^2 = g^2 (1 + 3/n + 9/n^2)^2 Var(phi) + se_ols^2(b_c).
     `signal` (T,) and `outcome` (T,), the outcome in the row of the period in which it falls; NaN for holes, a pair
     needs x_t, x_t+1 and y_t+1. One series, one period ahead only.
-    Raises InferenceError with fewer than 8 pairs, or where the signal follows its own past exactly.
+    Raises InferenceError with fewer than 4 pairs, or where the signal follows its own past exactly.
     Source: Amihud and Hurvich (2004, JFQA 39:813).
     """
     before, after, y = _pairs(signal, outcome)

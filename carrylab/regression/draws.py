@@ -9,6 +9,7 @@ from typing import Literal, Protocol
 import numpy as np
 
 from carrylab.errors import InferenceError
+from carrylab.regression.bias import PERSISTENCE_CAP
 from carrylab.regression.draws_measure import (
     Design,
     Kind,
@@ -27,6 +28,7 @@ Picks = Floats | Ints
 Scheme = Literal["resampled", "wild"]
 SCHEMES = {"resampled": "dates drawn with replacement", "wild": "dates in order, one random sign a date"}
 CHUNK = 1 << 20  # numbers in one array of a chunk of draws: eight megabytes
+FOR_PRINT = 999  # draws
 FEWEST_DRAWS, MOST_DRAWS = 16, 500  # in one chunk
 
 
@@ -49,23 +51,32 @@ class Draws:
     """Statistics of H hypotheses, all groups of all cases in order, on the data (H,) and on B draws (B, H).
 
     `nulls` (H,): slopes under the null. `fitted`: the null of each case, its entities those that have rows.
-    `scheme` and `seed` as used.
+    `added`: whether any case has added predictors. `scheme` and `seed` as used.
     """
 
     data: Measures
     draws: Measures
     nulls: Floats
     fitted: tuple[Null, ...]
+    added: bool
     scheme: Scheme
     seed: int
 
     @property
     def words(self) -> str:
         """How the draws were made, a sentence fragment."""
+        kept = ", added predictors kept at their data" if self.added else ""
         return (
             f"{len(self.draws.slope):,} draws under the null, {SCHEMES[self.scheme]}, the same for all entities and "
-            f"hypotheses, persistence estimated under the null, added predictors kept at their data, seed {self.seed}"
+            f"hypotheses, persistence estimated under the null{kept}, seed {self.seed}"
         )
+
+    @property
+    def warnings(self) -> tuple[str, ...]:
+        """Sentences on what weakens the draws: persistence at its cap, few draws."""
+        names = dict.fromkeys(name for null in self.fitted for name in np.array(null.names)[null.capped])
+        capped = f"the persistence of {', '.join(names)} was held at {PERSISTENCE_CAP}: a trend cannot be ruled out"
+        return ((capped,) if names else ()) + few_draws(len(self.draws.slope))
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -123,9 +134,18 @@ def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resa
         draws=each(drawn, np.transpose),
         nulls=np.concatenate([np.full(len(case.groups), case.question.null) for case in cases]),
         fitted=tuple(one.null for one in prepared),
+        added=any(len(case.question.sample.terms) > 1 for case in cases),
         scheme=scheme,
         seed=seed,
     )
+
+
+def few_draws(count: int) -> tuple[str, ...]:
+    """One sentence where the draws themselves leave the p-value uncertain."""
+    if count >= FOR_PRINT:
+        return ()
+    error = (0.05 * 0.95 / count) ** 0.5
+    return (f"{count} draws leave a p-value of .05 uncertain by {error:.3f}; use {FOR_PRINT} or more for print",)
 
 
 def prepare(cases: Sequence[Case], scheme: Scheme) -> tuple[Prepared, ...]:

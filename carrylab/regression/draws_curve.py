@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from carrylab.errors import InferenceError
-from carrylab.regression.draws import Spread, chunks
+from carrylab.regression.draws import Spread, chunks, few_draws
 from carrylab.regression.draws_curve_null import CurveNull, fit_curves, state_of
 from carrylab.regression.draws_measure import CurveMeasures, Group, Question, each, group_of, joined, summed, take_out
 from carrylab.regression.sample import Bools, Floats, Ints, take
@@ -60,6 +60,11 @@ class CurveDraws:
             f"{len(self.draws.slope):,} draws of whole curves under the expectations hypothesis, three roots ({fits}), "
             f"dates drawn with replacement, the same for all economies, seed {self.seed}"
         )
+
+    @property
+    def warnings(self) -> tuple[str, ...]:
+        """Sentences on what weakens the draws."""
+        return few_draws(len(self.draws.slope))
 
 
 def forward_spot_claims(maturities: Ints, long: Ints, holding: int, years: float) -> tuple[Floats, Floats, Floats]:

@@ -18,11 +18,12 @@ FEWEST = 12  # neighbouring dates an entity needs, for three coefficients and a 
 class Null:
     """y_{i,t+1} = mu_i + e, x_{i,t+1} = c_i + phi_i x_it + v, fitted entity by entity.
 
-    `persistence` (N,): phi, `capped` (N,) where it reached .999. `mean` (N,) of the signal; `first` (N,) row of its
-    first value and `start` (N,) that value less the mean. `outcome` (T, N): e, and `signal` (T, N): v with mean
-    zero, both in the row of the period in which they fall, NaN where there is none.
+    `names` (N,) of the entities. `persistence` (N,): phi, `capped` (N,) where it reached .999. `mean` (N,) of the
+    signal; `first` (N,) row of its first value and `start` (N,) that value less the mean. `outcome` (T, N): e, and
+    `signal` (T, N): v with mean zero, both in the row of the period in which they fall, NaN where there is none.
     """
 
+    names: tuple[str, ...]
     persistence: Floats
     capped: Bools
     mean: Floats
@@ -61,6 +62,7 @@ def fit_null(signal: Floats, outcomes: Floats, names: Sequence[str]) -> Null:
     moved = np.full_like(signal, np.nan)
     moved[1:] = signal[1:] - mean - persistence * (signal[:-1] - mean)
     return Null(
+        names=tuple(names),
         persistence=persistence,
         capped=np.abs(raw) > PERSISTENCE_CAP,
         mean=mean,

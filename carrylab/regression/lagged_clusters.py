@@ -20,8 +20,8 @@ def clustered_lagged(sample: Sample, estimate: Estimate, lags: int, factor: Clus
     G_l = sum_t s_t s_{t-l}' of the dates' influence, g_il = sum_t q_it q_{i,t-l}' of one entity's, which V_entity
     already holds. The factors c are those of `clustered`; putting the lags under the factor of the block they belong
     to is ours. With no lags it is two-way clustering. Lags count on the calendar, holes are zeros.
-    A variance that is not positive is replaced by the larger of V_entity and the dates' sum with Bartlett weights at
-    the same lag, and `problem` says so.
+    A variance that is not positive is replaced, with its row and column, by the larger of V_entity and the dates' sum
+    with Bartlett weights at the same lag, and `problem` says so.
     Returns covariance (m, m), m = (K+1) L. Raises InferenceError with fewer than two clusters.
     Source: Thompson (2011, JFE 99:1).
     """
@@ -39,18 +39,26 @@ def clustered_lagged(sample: Sample, estimate: Estimate, lags: int, factor: Clus
     by_entity = meats(sample, estimate).entity * scale(estimate.n_entities)
     common = kernel_sum(by_date, "rectangular", lags) * scale(estimate.n_dates)
     covariance = by_entity + common - _own(sample, estimate, lags) * scale(n)
-    failed = np.flatnonzero(np.diag(covariance) <= 0)
-    if not len(failed):
-        return Clustered(covariance, smallest, "")
     weighted = kernel_sum(by_date, "bartlett", lags) * scale(estimate.n_dates)
-    larger, name = by_entity, "by entity"
-    if weighted[failed[0], failed[0]] > by_entity[failed[0], failed[0]]:
-        larger, name = weighted, "by date with Bartlett weights at the same lag"
-    problem = (
-        f"the two-way covariance with {lags} lags of common shocks has a variance that is not positive; "
-        f"the larger one-way covariance, {name}, stands in its place"
+    covariance, problem = _mended(covariance, by_entity, weighted, estimate, lags)
+    return Clustered(covariance, smallest, problem)
+
+
+def _mended(
+    covariance: Floats, by_entity: Floats, by_date: Floats, estimate: Estimate, lags: int
+) -> tuple[Floats, str]:
+    """The covariance with the larger one-way rows and columns where a variance is not positive, and that in words."""
+    failed = np.diag(covariance) <= 0
+    if not failed.any():
+        return covariance, ""
+    larger = by_date if np.trace(by_date[failed][:, failed]) > np.trace(by_entity[failed][:, failed]) else by_entity
+    name = "by date with Bartlett weights at the same lag" if larger is by_date else "by entity"
+    names = [f"{term} of {leg}" for term in estimate.terms for leg in estimate.legs]
+    said = ", ".join(name for name, gone in zip(names, failed, strict=True) if gone)
+    return np.where(failed | failed[:, None], larger, covariance), (
+        f"the two-way variance with {lags} lags of common shocks is not positive for {said}; the larger one-way "
+        f"variance, {name}, stands in its place"
     )
-    return Clustered(larger, smallest, problem)
 
 
 def _own(sample: Sample, estimate: Estimate, lags: int) -> Floats:

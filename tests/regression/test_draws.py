@@ -272,7 +272,20 @@ def test_what_cannot_be_drawn_is_refused_in_one_line():
 def test_the_words_say_what_was_drawn():
     words = draw([world(1)], 5, seed=7, scheme="wild").words
     assert words.startswith("5 draws under the null, dates in order, one random sign a date")
-    assert words.endswith("seed 7")
+    assert words.endswith("persistence estimated under the null, seed 7")
+    assert "added predictors kept at their data, seed 7" in draw([world(4, controls=1)], 5, seed=7).words
+
+
+def test_few_draws_and_a_capped_persistence_are_said():
+    """At 199 draws a p of .05 has an error of sqrt(.05 x .95/199) = .0154."""
+    trending = world(1, N=2)
+    signal = np.column_stack([np.exp(0.05 * np.arange(90.0)), trending.signal[:, 1]])
+    leg = np.where(trending.question.sample.mask, trending.question.sample.y[:, :, 0], np.nan)
+    case = case_of(signal, leg, trending.question.sample.one_step[0], 3)
+    capped, few = draw([case], 199, seed=1).warnings
+    assert capped.startswith("the persistence of entity 0 was held at 0.999")
+    assert few.startswith("199 draws leave a p-value of .05 uncertain by 0.015")
+    assert draw([trending], 999, seed=1).warnings == ()
 
 
 def test_the_size_of_the_draws_on_a_dividend_yield():

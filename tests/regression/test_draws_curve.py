@@ -197,14 +197,14 @@ def test_the_words_name_roots_and_fitting_error():
 
 
 def test_the_fitting_error_is_that_of_the_yields_left_over():
-    """Three basis points of noise, in the yields and in the state they are set against: 3 x sqrt(1 + w'w) bp."""
-    yields = expectations(10, T=2000)
+    """A basis point of noise, in each yield and in the state it is set against: sqrt(1 + w'w) bp on average."""
     state = state_of(MATURITIES)
     others = np.setdiff1d(np.arange(6), state)
-    level = yields[:, 0] - yields[:, 0].mean(axis=0)
-    weights = np.linalg.lstsq(level[:, state], level[:, others], rcond=None)[0]
-    wanted = 3.0 * np.sqrt(1.0 + (weights**2).sum(axis=0).mean())
-    assert 1e4 * fit_curves(yields, MATURITIES, ["E"]).noise[0] == pytest.approx(wanted, rel=0.03)
+    loads = average_weights(np.array(ROOTS), MATURITIES)
+    weights = loads[others] @ np.linalg.inv(loads[state])
+    wanted = np.sqrt(1.0 + (weights**2).sum(axis=1).mean())
+    found = fit_curves(expectations(10, T=2000, noise=1e-4), MATURITIES, ["E"])
+    assert 1e4 * found.noise[0] == pytest.approx(wanted, rel=0.03)
 
 
 def test_the_size_of_the_draws_on_a_three_root_world():
