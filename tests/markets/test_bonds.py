@@ -141,6 +141,23 @@ def test_a_maturity_between_the_quoted_ones(rule: str, two_years: list[float]) -
     assert parity.notes == (f"maturities not quoted (24m) are filled: {rule}",)
 
 
+@pytest.mark.parametrize(
+    ("rule", "two_years"),
+    [
+        # A third of the way from 2 to 5 percent.
+        ("linear in yield", 0.03),
+        # Log price a third of the way from -2 to -20: -8 over two years.
+        ("flat forward", 0.04),
+    ],
+)
+def test_a_maturity_nearer_to_the_shorter_of_two(rule: str, two_years: float) -> None:
+    quoted = {("EA", "12m"): [0.02, 0.02], ("EA", "48m"): [0.05, 0.05]}
+    yields = table("zero_yields", "economy maturity", quoted, interval="year")
+    options = {"interval": "year", "horizons": "1y", "maturities": "2y", "missing_maturity": rule}
+    parity = one(market("bonds", "yield-spread", yields, **options))
+    assert parity.signal[0, 0] + 0.02 == pytest.approx(two_years, abs=1e-15)
+
+
 def test_notes_name_only_what_their_own_parity_filled() -> None:
     yields = table("zero_yields", "economy maturity", THREE, interval="year")
     options = {"interval": "year", "missing_maturity": "linear in yield"}

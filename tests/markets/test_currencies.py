@@ -126,6 +126,14 @@ def test_a_length_that_is_not_quoted(rule: str, differential: float, note: str) 
     assert parity.notes == (note,)
 
 
+def test_a_length_nearer_to_the_shorter_of_two() -> None:
+    rates = {("HHH", n): [0.0] * 5 for n in ("1m", "4m")} | {("AAA", "1m"): [3.0] * 5, ("AAA", "4m"): [6.0] * 5}
+    options = {"horizons": "2m", "missing_tenor": "linear in rate"}
+    parity = one(market("currencies", "uncovered-interest", spot(), deposits(rates), **options))
+    # A third of the way from 3 to 6 percent, for two months.
+    assert parity.signal[0, 0] == pytest.approx(0.04 / 6, abs=1e-15)
+
+
 def test_the_discount_is_interpolated_per_year_and_not_the_price() -> None:
     prices = {("AAA", "1m"): [1.097] * 5, ("AAA", "3m"): [1.085] * 5}
     options = {"horizons": "2m", "missing_tenor": "linear in rate"}
