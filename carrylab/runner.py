@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -22,6 +22,7 @@ from carrylab.evidence.drawn import drawable, drawn_rows
 from carrylab.evidence.drawn_curves import CurveRows, curve_rows
 from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
+from carrylab.evidence.others import other_rows
 from carrylab.evidence.setting import Fit, Row, errors_of
 from carrylab.evidence.shares import share_rows
 from carrylab.evidence.summary import summary_rows
@@ -36,6 +37,7 @@ from carrylab.regression.covariance import ErrorOptions
 from carrylab.regression.fit import fit
 from carrylab.regression.sample import Floats, OneStep, Sample, make_sample, take
 from carrylab.results import Results
+from carrylab.schema import nearest
 
 RHO_STEP = 0.02
 PRICED = ("zero_yields", "spot", "prices", "panel")
@@ -102,7 +104,9 @@ def build(market: Market, economies: Mapping[str, str]) -> Built:
     checks = check_market(data)
     if any(one.level == "error" for one in checks):
         return Built(market, data, (), tuple(checks))
-    parities = tuple(_kept(parity, market) for parity in MARKETS[market.kind](data, economies))
+    whole = MARKETS[market.kind](data, economies)
+    _require_known(market, [entity for parity in whole for entity in parity.entities])
+    parities = tuple(_kept(parity, market) for parity in whole)
     main = next(iter(market.sources.values()))[0].file
     proofs = [identity_check(parity, main) for parity in parities]
     return Built(market, data, parities, (*checks, *proofs))
@@ -113,6 +117,17 @@ def refuse_errors(built: list[Built]) -> None:
     lines = [one.line() for market in built for one in market.checks if one.level == "error"]
     if lines:
         raise DataError("\n".join(lines))
+
+
+def _require_known(market: Market, entities: Iterable[Entity]) -> None:
+    """Every code that is left out must be one of the market's."""
+    known = {code for e in entities for code in (e.name, e.economy, e.currency, e.index) if code}
+    for code in market.leave_out:
+        if code not in known:
+            raise StudyError(
+                f"market {market.name!r}, key leave_out: {code!r} is not in this market{nearest(code, known)}; allowed "
+                f"are {', '.join(sorted(known))}"
+            )
 
 
 def _kept(parity: Parity, market: Market) -> Parity:
@@ -199,7 +214,9 @@ def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
     said += [by_curves.refused] if by_curves.refused else []
     for family, (parity, _, terms) in zip(families, prepared, strict=True):
         drawn = bool(inference.draws) and (drawable(family[0]) or parity.name in by_curves.parities)
-        rows += [row for one in family for row in (*share_rows(one, drawn=drawn), *summary_rows(one, said))]
+        rows += [
+            row for one in family for row in (*share_rows(one, drawn=drawn), *summary_rows(one, said), *other_rows(one))
+        ]
         rows += group_rows(family[1:])
         rows += regression_ledger_rows(family[0])
         rows += latest_rows(family[0], terms)
@@ -234,8 +251,8 @@ def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:
 def _fit(parity: Parity, sample: Sample, group: str, market: Market, name: str = "all") -> Fit:
     options = error_options(market.inference)
     found = fit(sample, effects=market.effects)
-    headline, away = errors_of(sample, found, options)
-    return Fit(parity, group, sample, found, headline, away, market.inference.confidence, name)
+    errors = errors_of(sample, found, options)
+    return Fit(parity, group, sample, found, *errors, market.inference.confidence, name)
 
 
 def error_options(inference: Inference) -> ErrorOptions:

@@ -244,3 +244,9 @@ def test_formulas_in_texts_are_guarded_and_numbers_are_not(tmp_path: Path) -> No
     assert ",-0." in text
     again = record.read_findings(tmp_path / "out" / "findings.csv")
     assert {"=cmd()", "'quoted", "EC", "pooled"} <= set(again["group"])
+
+
+def test_a_code_left_out_that_is_not_there(tmp_path: Path) -> None:
+    text = worlds.CURRENCIES.replace('by = "currency"', 'leave_out = ["BBC"]')
+    said = refused(call("run", worlds.write(tmp_path, text, **worlds.currencies()), "--into", tmp_path / "out"))
+    assert "key leave_out: 'BBC' is not in this market; did you mean 'BBB'?" in said

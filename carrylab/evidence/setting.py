@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 
+from carrylab.errors import InferenceError
 from carrylab.markets.parity import Parity
 from carrylab.regression.covariance import ErrorOptions, Errors, standard_errors
 from carrylab.regression.fit import Estimate
@@ -29,7 +30,8 @@ class Fit:
 
     `headline` are the errors the study chose. `away` are valid away from the null as well: equal to the headline,
     or cosines where the headline imposes the null of no premium. Both rest on the estimate of the headline, which is
-    the instrument's own where the study chose it. `columns` are the entities of the pooled sample that a group takes.
+    the instrument's own where the study chose it. `second` are those of the second opinion, with an estimate of their
+    own. `columns` are the entities of the pooled sample that a group takes.
     """
 
     parity: Parity
@@ -38,9 +40,15 @@ class Fit:
     estimate: Estimate
     headline: Errors
     away: Errors
+    second: Errors
     confidence: float
     name: str = "all"
     columns: tuple[int, ...] = ()
+
+    @property
+    def parity_signal(self) -> Floats:
+        """The signal of this fit's entities on all dates (T, n), with its holes."""
+        return self.parity.signal[:, list(self.columns)] if self.columns else self.parity.signal
 
     @property
     def weights(self) -> Floats:
@@ -79,13 +87,27 @@ class Fit:
         }
 
 
-def errors_of(sample: Sample, estimate: Estimate, options: ErrorOptions) -> tuple[Errors, Errors]:
-    """The errors asked for, and those that hold away from the null of no premium too."""
+def errors_of(sample: Sample, estimate: Estimate, options: ErrorOptions) -> tuple[Errors, Errors, Errors]:
+    """The errors asked for, those that hold away from the null of no premium too, and those of a second opinion.
+
+    Beside 1B the second opinion is the instrument with 1B scores, whose size holds for persistent signals too; where
+    the sample cannot carry it, and beside the instrument itself, it is the errors valid away from the null.
+    """
     headline = standard_errors(sample, estimate, options)
     away = next((AWAY[kind] for kind in headline.kinds if kind in AWAY), None)
     if away is None:
-        return headline, headline
-    return headline, standard_errors(sample, estimate, replace(options, kind=away, factor=None, reference=None))
+        return headline, headline, headline
+
+    def other(kind: str) -> Errors:
+        return standard_errors(sample, estimate, replace(options, kind=kind, factor=None, reference=None))
+
+    beside = other(away)
+    if "one-period" not in headline.kinds:
+        return headline, beside, beside
+    try:
+        return headline, beside, other("instrument")
+    except InferenceError:
+        return headline, beside, beside
 
 
 def tested(value: float, error: float, null: float, df: float, confidence: float) -> Row:

@@ -78,17 +78,18 @@ def _of_signal(fit: Fit, errors: Errors, at: int) -> Row:
 
 
 def _second_opinion(fit: Fit) -> list[Row]:
-    """The signal's rows again with errors valid away from the null, where the headline imposes it."""
-    if fit.away is fit.headline:
+    """The signal's rows again by other errors, and the test that nothing is paid, where the headline imposes a null."""
+    if fit.second is fit.headline:
         return []
     rows = []
     for at, leg in enumerate(fit.parity.legs):
-        if fit.headline.kinds[at] in AWAY:
-            row = _coefficient(fit, fit.away, (0, at), "second opinion")
-            rows.append(row | _of_signal(fit, fit.away, at))
-            if leg.role == "return" and fit.has_identity:
-                premium = parity_shares(fit).premium
-                rows.append(row | {"term": "nothing paid", **_scaled(premium, fit.away, at, fit.confidence)})
+        if fit.headline.kinds[at] not in AWAY:
+            continue
+        row = _coefficient(fit, fit.second, (0, at), "second opinion")
+        rows.append(row | _of_signal(fit, fit.second, at))
+        if leg.role == "return" and leg.weight is not None and fit.has_identity:
+            premium, error = leg.weight * row["estimate"], abs(leg.weight) * row["std_error"]
+            rows.append(row | {"term": "nothing paid", **judged(fit.second, at, premium, error, 0.0, fit.confidence)})
     return rows
 
 

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Hashable, Iterator
+from dataclasses import replace
 from typing import Any
 
 import pandas as pd
 
-from carrylab.report.numbers import digits_of, fixed, in_brackets, p_value
+from carrylab.report.numbers import digits_of, fixed, in_brackets, in_parentheses, p_value
 from carrylab.report.table import (
     Cell,
     Line,
@@ -30,10 +31,13 @@ def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
     """One table a market, parity and horizon."""
     shares = findings[findings["section"] == "shares"]
     joint = findings[(findings["section"] == "joint") & (findings["group"] == "all groups")]
+    others = findings[(findings["section"] == "other methods") & (findings["group"] == "pooled")]
     for key, rows in shares.groupby(["market", "parity", "horizon"], sort=False):
         market, parity, horizon = (str(part) for part in key)
         own = (joint["market"] == market) & (joint["parity"] == parity) & (joint["horizon"] == horizon)
-        yield _detail(f"{market}: {parity}, {horizon}", rows, joint[own])
+        there = (others["market"] == market) & (others["parity"] == parity) & (others["horizon"] == horizon)
+        found = _detail(f"{market}: {parity}, {horizon}", rows, joint[own])
+        yield replace(found, notes=(*found.notes, *_other_notes(others[there])))
 
 
 def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:
@@ -127,6 +131,16 @@ def _joint_notes(joint: pd.DataFrame) -> list[str]:
         more = f"; {row['note']}" if row["note"] and not math.isnan(row["p_value"]) else ""
         said.append(f"{str(row['term']).capitalize()} in all groups: {result}{more}.")
     return said
+
+
+def _other_notes(others: pd.DataFrame) -> list[str]:
+    """The pooled slope of the return leg by other methods, on one line."""
+    said = [
+        f"{row['term']} {fixed(row['estimate'])} {in_parentheses(row['std_error'])}"
+        for row in others.to_dict("records")
+        if not math.isnan(row["estimate"])
+    ]
+    return [f"Pooled slope of the return leg by other methods: {'; '.join(said)}."] if said else []
 
 
 def _resolved_note(rows: pd.DataFrame) -> tuple[str, ...]:

@@ -24,9 +24,9 @@ def of(found: pd.DataFrame, section: str, term: str, group: str = "pooled") -> p
     return rows[rows["rank"].isin(["", "second opinion"])].iloc[0]
 
 
-def test_without_draws_the_second_opinion_is_cosines(tmp_path: Path) -> None:
+def test_without_draws_the_second_opinion_is_the_instrument(tmp_path: Path) -> None:
     found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies())
-    assert "cosines" in of(found, "shares", "nothing paid")["method"]
+    assert "instrument" in of(found, "shares", "nothing paid")["method"]
     assert not (found["section"] == "draws").any()
 
 
