@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
+from scipy.signal import lfilter
 
 from carrylab.errors import SampleError
 from carrylab.regression.effects import Absorbed, Effects, blocks
@@ -66,15 +67,18 @@ def instrument_null(found: Instrumented, leg: int) -> NullInfluence:
 
 
 def filtered(x: Floats, used: Bools, root: float) -> Floats:
-    """The instruments (T, N, K) of the terms (T, N, K) over each entity's used dates, zero elsewhere."""
-    z = np.zeros_like(x)
-    last_x, last_z = np.zeros(x.shape[1:]), np.zeros(x.shape[1:])
-    seen = np.full(x.shape[1], -1)
-    for t in np.flatnonzero(used.any(axis=1)):
-        here = used[t]
-        known = here & (seen >= 0)
-        z[t, known] = root ** (t - seen[known])[:, None] * last_z[known] + x[t, known] - last_x[known]
-        last_x[here], last_z[here], seen[here] = x[t, here], z[t, here], t
+    """The instruments (T, N, K) of the terms (T, N, K) over each entity's used dates, zero elsewhere.
+
+    z_t = root^gap z_last + x_t - x_last, last the used date before t: a linear filter of the changes, since on dates
+    in between it only fades.
+    """
+    rows = np.where(used, np.arange(len(x))[:, None], -1)
+    newest = np.maximum.accumulate(rows, axis=0)
+    last = np.vstack([np.full((1, used.shape[1]), -1), newest[:-1]])
+    known = (used & (last >= 0))[:, :, None]
+    before = np.take_along_axis(x, np.maximum(last, 0)[:, :, None], axis=0)
+    changes = np.where(known, x - before, 0.0)
+    z: Floats = lfilter([1.0], [1.0, -root], changes, axis=0) * used[:, :, None]
     return z
 
 
