@@ -26,6 +26,7 @@ NO_COUNTERPART = (
     "one-period (Hodrick 1B): no counterpart",
     "equal-weighted cosines: no counterpart",
     "clustered: both with one factor: no counterpart",
+    "IVX instrument, fixed-b laws, clusters with lags, draws: no counterpart",
 )
 # Our error kind and factor beside the same thing in PanelOLS.
 PANEL_KINDS: dict[tuple[str, str], dict[str, Any]] = {
