@@ -48,7 +48,9 @@ def drawn_rows(families: Sequence[Sequence[Fit]], count: int, seed: int) -> list
     with ThreadPoolExecutor(WORKERS) as pool:
         found = draw([_case(family) for family in chosen], count, seed=seed, spread=pool.map)
     said = _said(found, chosen[0][0].confidence)
-    return rows_of(chosen, said)
+    place = chosen[0][0].place() | {"section": "warning"}
+    warned = [place | {"term": f"draws {number}", "note": text} for number, text in enumerate(found.warnings, 1)]
+    return rows_of(chosen, said) + warned
 
 
 def rows_of(families: Sequence[Sequence[Fit]], said: Drawn) -> list[Row]:

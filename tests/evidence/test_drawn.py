@@ -45,6 +45,12 @@ def test_draws_stand_behind_the_second_opinion(tmp_path: Path) -> None:
         assert of(found, "draws", "stepdown", group)["p_value"] >= second["p_value"] - 1e-12
 
 
+def test_few_draws_are_said_aloud(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies(), f"draws = {DRAWS}")
+    warnings = found.loc[found["section"] == "warning", "note"]
+    assert warnings.str.contains("199 draws").any()
+
+
 def test_the_statistic_is_the_headline_t(tmp_path: Path) -> None:
     found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies(), f"draws = {DRAWS}")
     rows = found[(found["term"] == "nothing paid") & (found["group"] == "pooled")].set_index("rank")
