@@ -65,8 +65,10 @@ def check(study: Path) -> None:
 def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int) -> None:
     """Run STUDY, print the report and write the run folder."""
     import carrylab
+    from carrylab.record import require_place
 
     target = into or Path(f"{study.stem}_results")
+    require_place(target, parquet=parquet)
     results = carrylab.run(carrylab.read_study(study), audit=audit, progress=_progress())
     results.save(target, parquet=parquet, width=width)
     click.echo((target / "report.txt").read_text(encoding="utf-8"))
@@ -103,5 +105,8 @@ def start(files: tuple[Path, ...], study: Path) -> None:
     if study.exists():
         raise CarrylabError(f"{study}: exists already; name another file with --study")
     text = begin(files, study)
-    study.write_text(text, encoding="utf-8", newline="\n")
+    try:
+        study.write_text(text, encoding="utf-8", newline="\n")
+    except OSError as wrong:
+        raise CarrylabError(f"{study}: cannot be written ({wrong.strerror}); name another file with --study") from None
     click.echo(f"Wrote {study}. Answer the lines marked 'question', then: carrylab check {study}")

@@ -42,22 +42,33 @@ def save(run: Run, directory: Path, *, parquet: bool) -> Path:
     findings.parquet is written wherever pyarrow is installed; `parquet` insists on it (ExtraError).
     An older run folder of the same name is replaced; any other folder or file of that name is refused.
     """
-    installed = find_spec("pyarrow") is not None
-    if parquet and not installed:
-        raise ExtraError("findings.parquet needs pyarrow; install carrylab with its parquet extra")
-    _require_free(directory)
+    require_place(directory, parquet=parquet)
+    try:
+        return _saved(run, directory)
+    except OSError as wrong:
+        raise DataError(f"{directory}: cannot be written ({wrong.strerror}); name another run folder") from None
+
+
+def _saved(run: Run, directory: Path) -> Path:
     directory.parent.mkdir(parents=True, exist_ok=True)
     with tempfile.TemporaryDirectory(prefix=f".{directory.name}-", dir=directory.parent) as made:
         fresh = Path(made) / "run"
         fresh.mkdir()
-        _write(run, fresh, parquet=installed)
+        _write(run, fresh, parquet=_can_write_parquet())
         if directory.exists():
             directory.rename(Path(made) / "old")
         fresh.rename(directory)
     return directory
 
 
-def _require_free(directory: Path) -> None:
+def _can_write_parquet() -> bool:
+    return find_spec("pyarrow") is not None
+
+
+def require_place(directory: Path, *, parquet: bool) -> None:
+    """Refuse a place that is taken, and Parquet that cannot be written, before any work is done."""
+    if parquet and not _can_write_parquet():
+        raise ExtraError("findings.parquet needs pyarrow; install carrylab with its parquet extra")
     if not directory.exists():
         return
     if directory.is_dir() and (not any(directory.iterdir()) or _is_run(directory)):

@@ -250,3 +250,11 @@ def test_a_code_left_out_that_is_not_there(tmp_path: Path) -> None:
     text = worlds.CURRENCIES.replace('by = "currency"', 'leave_out = ["BBC"]')
     said = refused(call("run", worlds.write(tmp_path, text, **worlds.currencies()), "--into", tmp_path / "out"))
     assert "key leave_out: 'BBC' is not in this market; did you mean 'BBB'?" in said
+
+
+def test_places_that_cannot_be_written(study: Path, tmp_path: Path) -> None:
+    said = refused(call("run", study, "--into", tmp_path / "spot.csv" / "out"))
+    assert "cannot be written" in said
+    said = refused(call("start", tmp_path / "spot.csv", "--study", tmp_path / "no" / "such" / "study.toml"))
+    assert "cannot be written" in said
+    assert "exists already" in refused(call("start", tmp_path / "spot.csv", "--study", study))
