@@ -36,8 +36,10 @@ class Table:
     corner: str = ""
 
     def filled(self) -> tuple[Line, ...]:
-        """The lines that say something: headings, and lines with more than dashes in them."""
-        return tuple(line for line in self.lines if line.heading or any(cell.text.strip(" -") for cell in line.cells))
+        """The lines that say something: those with more than dashes in them, and headings with such lines below."""
+        said = [line for line in self.lines if line.heading or any(cell.text.strip(" -") for cell in line.cells)]
+        below = [*said[1:], Line("", heading=True)]
+        return tuple(line for line, after in zip(said, below, strict=True) if not (line.heading and after.heading))
 
     def columns(self, chosen: slice) -> Table:
         """The same table with some of its columns."""

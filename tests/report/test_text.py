@@ -74,3 +74,11 @@ def test_the_report_does_not_import_plotting() -> None:
     script = "import carrylab.results, sys; print('matplotlib' in sys.modules)"
     done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
     assert done.stdout.strip() == "False"
+
+
+def test_a_heading_with_nothing_below_is_left_out() -> None:
+    empty = Line("x", (Cell("-"),))
+    table = Table(
+        "T", ("a",), (Line("Empty", heading=True), empty, Line("Full", heading=True), Line("y", (Cell("1"),)))
+    )
+    assert [line.label for line in table.filled()] == ["Full", "y"]
