@@ -18,8 +18,8 @@ from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
-from carrylab.evidence.drawn import drawable, drawn_rows
-from carrylab.evidence.drawn_curves import CurveRows, curve_rows
+from carrylab.evidence.drawn import DrawnRows, drawn_rows
+from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
 from carrylab.evidence.others import other_rows
@@ -206,16 +206,16 @@ def _one_step(leg: Leg, steps: int) -> OneStep | None:
 
 def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
     """Fit every parity of one market, pooled and by group, and write its rows."""
-    inference = built.market.inference
     prepared = [(parity, *sample_of(parity, built.data)) for parity in built.parities]
     families = [tuple(_fits(parity, sample, built.market)) for parity, sample, _ in prepared]
-    rows, by_curves = _drawn(built, families)
+    drawn = _drawn(built, families)
+    rows = list(drawn.rows)
     said = [AVERAGED] if is_averaged(built.data) else []
-    said += [by_curves.refused] if by_curves.refused else []
+    said += [drawn.refused] if drawn.refused else []
     for family, (parity, _, terms) in zip(families, prepared, strict=True):
-        drawn = bool(inference.draws) and (drawable(family[0]) or parity.name in by_curves.parities)
+        other = parity.name in drawn.parities
         rows += [
-            row for one in family for row in (*share_rows(one, drawn=drawn), *summary_rows(one, said), *other_rows(one))
+            row for one in family for row in (*share_rows(one, drawn=other), *summary_rows(one, said), *other_rows(one))
         ]
         rows += group_rows(family[1:])
         rows += regression_ledger_rows(family[0])
@@ -225,15 +225,14 @@ def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
     return Fitted(fits, tuple((one.sample.label, one.sample) for one in fits), tuple(rows))
 
 
-def _drawn(built: Built, families: list[tuple[Fit, ...]]) -> tuple[list[Row], CurveRows]:
+def _drawn(built: Built, families: list[tuple[Fit, ...]]) -> DrawnRows:
     """Rows of the draws under the null: of whole curves for bonds, of returns and signals for all else."""
     market = built.market
     count, seed = market.inference.draws, market.inference.seed
     if market.kind != "bonds" or not count:
-        return drawn_rows(families, count, seed), CurveRows([], frozenset(), "")
+        return drawn_rows(families, count, seed)
     quoted = curves(built.data.tables["zero_yields"], built.data.calendar, "economy", "maturity")
-    by_curves = curve_rows(families, YieldCurves(quoted, market), count, seed)
-    return by_curves.rows, by_curves
+    return curve_rows(families, YieldCurves(quoted, market), count, seed)
 
 
 def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:

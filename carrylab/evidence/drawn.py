@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from carrylab.errors import InferenceError
 from carrylab.evidence.setting import EFFECTS, Fit, Row
 from carrylab.regression.draws import Case, Draws, draw
 from carrylab.regression.draws_measure import Question
@@ -30,6 +31,18 @@ class Drawn:
     words: str
 
 
+@dataclass(frozen=True, eq=False, slots=True)
+class DrawnRows:
+    """Rows from draws, the parities they stand for, and why there are none where they were refused."""
+
+    rows: tuple[Row, ...]
+    parities: frozenset[str]
+    refused: str
+
+
+NOTHING_DRAWN = DrawnRows((), frozenset(), "")
+
+
 def drawable(fit: Fit) -> bool:
     """Whether a pooled fit has one-period outcomes that stand in their own period, so that its null can be drawn."""
     at = fit.leg_of("return")
@@ -37,20 +50,28 @@ def drawable(fit: Fit) -> bool:
     return outcome is not None and outcome.outcomes.ndim == 2
 
 
-def drawn_rows(families: Sequence[Sequence[Fit]], count: int, seed: int) -> list[Row]:
+def drawn_rows(families: Sequence[Sequence[Fit]], count: int, seed: int) -> DrawnRows:
     """Rows for all fits of one market, drawn together: each family is a pooled fit followed by its groups.
 
     rank "second opinion": the return leg's slope and test with the draws' p; section "draws": the rest.
     """
     chosen = [family for family in families if drawable(family[0])]
     if not count or not chosen:
-        return []
-    with ThreadPoolExecutor(WORKERS) as pool:
-        found = draw([_case(family) for family in chosen], count, seed=seed, spread=pool.map)
+        return NOTHING_DRAWN
+    try:
+        with ThreadPoolExecutor(WORKERS) as pool:
+            found = draw([_case(family) for family in chosen], count, seed=seed, spread=pool.map)
+    except InferenceError as refused:
+        return DrawnRows((), frozenset(), f"no draws under the null: {refused}")
     said = _said(found, chosen[0][0].confidence)
     place = chosen[0][0].place() | {"section": "warning"}
     warned = [place | {"term": f"draws {number}", "note": text} for number, text in enumerate(found.warnings, 1)]
-    return rows_of(chosen, said) + warned
+    return DrawnRows((*rows_of(chosen, said), *warned), names_of(chosen), "")
+
+
+def names_of(families: Sequence[Sequence[Fit]]) -> frozenset[str]:
+    """The parities of some families."""
+    return frozenset(family[0].parity.name for family in families)
 
 
 def rows_of(families: Sequence[Sequence[Fit]], said: Drawn) -> list[Row]:

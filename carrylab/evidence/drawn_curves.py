@@ -4,14 +4,22 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
 
 import numpy as np
 
 from carrylab.data.calendar import Tenor, horizon_years, parse_tenor, steps_in
 from carrylab.errors import InferenceError
-from carrylab.evidence.drawn import WORKERS, Drawn, columns_of, rows_of, summed_up
-from carrylab.evidence.setting import Fit, Row
+from carrylab.evidence.drawn import (
+    NOTHING_DRAWN,
+    WORKERS,
+    Drawn,
+    DrawnRows,
+    columns_of,
+    names_of,
+    rows_of,
+    summed_up,
+)
+from carrylab.evidence.setting import Fit
 from carrylab.markets.curves import YieldCurves
 from carrylab.markets.tenors import step_tenor
 from carrylab.regression.draws_curve import Claims, CurveDraws, Curves, draw_curves, forward_spot_claims
@@ -21,30 +29,21 @@ from carrylab.regression.sample import Floats, Ints
 DRAWN = ("forward-spot", "yield-spread", "carry")
 
 
-@dataclass(frozen=True, eq=False, slots=True)
-class CurveRows:
-    """Rows from draws of curves, the parities they stand for, and why there are none where there are none."""
-
-    rows: list[Row]
-    parities: frozenset[str]
-    refused: str
-
-
-def curve_rows(families: Sequence[Sequence[Fit]], curves: YieldCurves, count: int, seed: int) -> CurveRows:
+def curve_rows(families: Sequence[Sequence[Fit]], curves: YieldCurves, count: int, seed: int) -> DrawnRows:
     """Rows for the bond parities of one horizon each whose signals and returns are sums of yields, drawn together."""
     chosen = [family for family in families if family[0].parity.name in DRAWN]
     step = step_tenor(chosen[0][0].parity.calendar) if chosen else None
     if not count or step is None:
-        return CurveRows([], frozenset(), "")
+        return NOTHING_DRAWN
     try:
         quoted = _curves(chosen, curves, step)
         with ThreadPoolExecutor(WORKERS) as pool:
             cases = [_claims(family, quoted, step) for family in chosen]
             found = draw_curves(quoted, cases, count, seed=seed, spread=pool.map)
     except InferenceError as refused:
-        return CurveRows([], frozenset(), f"no draws of yield curves: {refused}")
+        return DrawnRows((), frozenset(), f"no draws of yield curves: {refused}")
     said = _said(found, chosen[0][0].confidence)
-    return CurveRows(rows_of(chosen, said), frozenset(family[0].parity.name for family in chosen), "")
+    return DrawnRows(tuple(rows_of(chosen, said)), names_of(chosen), "")
 
 
 def _periods(length: Tenor, fit: Fit) -> int:

@@ -77,3 +77,12 @@ def test_the_report_says_what_both_opinions_say_together(tmp_path: Path) -> None
     assert results.table().loc["  at 5%, a premium is", "FX"] == "not seen"
     assert "share paid, bias taken out" in results.table().index
     assert "199 draws under the null" in results.report()
+
+
+def test_a_panel_that_cannot_be_drawn_keeps_the_instrument_and_says_why(tmp_path: Path) -> None:
+    files = worlds.currencies()
+    spot = files["spot"]
+    young = (spot["currency"] == "CCC") & (spot["date"] < "2009-03")
+    found = findings(tmp_path, worlds.CURRENCIES, files | {"spot": spot[~young]}, f"draws = {DRAWS}")
+    assert "instrument" in of(found, "shares", "nothing paid")["method"]
+    assert found.loc[found["section"] == "warning", "note"].str.contains("no draws under the null: .*CCC").any()
