@@ -1,5 +1,6 @@
 """The built wheel holds all that a run needs."""
 
+import os
 import subprocess
 import sys
 import zipfile
@@ -22,7 +23,7 @@ def test_a_run_from_the_wheel(tmp_path: Path) -> None:
     done = subprocess.run(
         [sys.executable, "-c", script, "run", study, "--into", tmp_path / "out"],
         cwd=tmp_path,
-        env={"PYTHONPATH": str(tmp_path / "site"), "PYTHONIOENCODING": "utf-8"},
+        env=os.environ | {"PYTHONPATH": str(tmp_path / "site"), "PYTHONIOENCODING": "utf-8"},
         capture_output=True,
         text=True,
         check=False,
