@@ -51,7 +51,7 @@ def check(study: Path) -> None:
     for one in found:
         click.echo(one.line())
     count = {level: sum(one.level == level for one in found) for level in ("error", "warning", "note")}
-    click.echo(f"{count['error']} errors, {count['warning']} warnings, {count['note']} notes")
+    click.echo(", ".join(f"{n} {level}{'' if n == 1 else 's'}" for level, n in count.items()))
     if count["error"]:
         sys.exit(2)
 

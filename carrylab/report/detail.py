@@ -226,4 +226,4 @@ def check_lines(findings: pd.DataFrame) -> list[str]:
     rows = findings[findings["section"] == "check"]
     lines = [str(note) for note in rows.loc[rows["rank"].isin(SHOWN_CHECKS), "note"]]
     notes = int((rows["rank"] == "note").sum())
-    return [*lines, f"{notes} notes stand in findings.csv, section check."] if notes else lines
+    return [*lines, f"Notes in findings.csv, section check: {notes}."] if notes else lines
