@@ -36,18 +36,21 @@ def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
         market, parity, horizon = (str(part) for part in key)
         own = (joint["market"] == market) & (joint["parity"] == parity) & (joint["horizon"] == horizon)
         there = (others["market"] == market) & (others["parity"] == parity) & (others["horizon"] == horizon)
-        found = _detail(f"{market}: {parity}, {horizon}", rows, joint[own])
+        found = _detail(f"{market}: {parity}, {horizon}, by {rows['interval'].iloc[0]}", rows, joint[own])
         yield replace(found, notes=(*found.notes, *_other_notes(others[there])))
 
 
 def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:
     headline = rows[(rows["rank"] == "headline") & (rows["sample"] == "all")]
     own_p = not (headline["term"] == "nothing paid").any()
-    head: list[str] = []
     legs = [str(leg) for leg in headline.loc[headline["term"] == "signal", "leg"].unique()]
-    for leg in legs:
-        head += [leg, "R2"] + (["p"] if own_p else [])
-    head += [] if own_p else ["p, nothing paid", "p, all paid"]
+    head = [name for leg in legs for name in ((leg, "R2", "p") if own_p else (leg, "R2"))]
+    head += ["obs."] if own_p else ["p, nothing paid", "p, all paid", "obs."]
+    spans = headline[["first", "last"]].drop_duplicates()
+    if len(spans) == 1:
+        title = f"{title}, origins {spans['first'].iloc[0]} to {spans['last'].iloc[0]}"
+    else:
+        head += ["from", "to"]
     by_group: dict[str, list[Record]] = {}
     for record in headline.to_dict("records"):
         by_group.setdefault(str(record["group"]), []).append(record)
@@ -55,10 +58,11 @@ def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:
     lines: list[Line] = []
     for group in sorted(by_group, key=lambda name: name == "pooled"):
         lines += _group_lines(group, by_group[group], legs, digits)
+    shown = slice(0, len(head))
     return Table(
         title=title,
-        head=(*head, "obs.", "from", "to"),
-        lines=tuple(lines),
+        head=tuple(head),
+        lines=tuple(Line(line.label, line.cells[shown]) for line in lines),
         notes=(*_detail_notes(headline), *_resolved_note(rows), *_joint_notes(joint)),
         corner="slopes",
     )
@@ -111,7 +115,11 @@ def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
     for row in pooled.to_dict("records"):
         by_method.setdefault(str(row["method"]).partition("; ")[2], []).append(str(row["leg"]))
     methods = "; ".join(f"{', '.join(legs)}: {method}" for method, legs in by_method.items())
-    said = [f"Slope of each leg on the signal, {effects}; standard errors in parentheses. Pooled errors: {methods}."]
+    r2 = "centred" if effects == "no effects" else "within the effects"
+    said = [
+        f"Slope of each leg on the signal, {effects}; standard errors in parentheses; R2 {r2}. "
+        f"Pooled errors: {methods}."
+    ]
     if signal.groupby("leg")["method"].nunique().max() > 1:
         said.append("Groups with fewer dates have fewer cosines or lags; findings.csv names those of each.")
     if nulls:
@@ -166,11 +174,16 @@ def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str)
     for record in rows.to_dict("records"):
         by_entity.setdefault(str(record["group"]), {})[str(record["term"])] = record
     own_units = parity == "columns"
-    lines = [_latest_line(entity, terms, 1 if own_units else 100) for entity, terms in by_entity.items()]
-    unit = "" if own_units else ", %"
+    here = findings[(findings["market"] == market) & (findings["parity"] == parity)]
+    ratio = bool((here["role"] == "carried over").any())
+    scales = (1 if own_units or ratio else 100, 1 if own_units else 100)
+    lines = [_latest_line(entity, terms, scales) for entity, terms in by_entity.items()]
+    signal, premium = (
+        f"{name}, %" if scale == 100 else name for name, scale in zip(("signal", "premium"), scales, strict=True)
+    )
     return Table(
         title=f"{market}: newest signal and fitted premium, {parity}, {horizon}",
-        head=("at", f"signal{unit}", "percentile", f"premium{unit}", "interval"),
+        head=("at", signal, "percentile", premium, "interval"),
         lines=tuple(lines),
         notes=(
             "Premium over the horizon from the pooled fit, in sample; the interval is for the expected premium, not "
@@ -180,11 +193,12 @@ def latest_table(findings: pd.DataFrame, market: str, parity: str, horizon: str)
     )
 
 
-def _latest_line(entity: str, terms: dict[str, Record], scale: int) -> Line:
-    premium = terms["fitted premium"]
+def _latest_line(entity: str, terms: dict[str, Record], scales: tuple[int, int]) -> Line:
+    """`scales` of signal and premium."""
+    premium, (wide, scale) = terms["fitted premium"], scales
     cells = (
         word_cell(str(premium["last"])),
-        number_cell(terms["signal"]["estimate"] * scale),
+        number_cell(terms["signal"]["estimate"] * wide),
         percent_cell(terms["percentile"]["estimate"], 0),
         number_cell(premium["estimate"] * scale),
         interval_cell(premium["lower"] * scale, premium["upper"] * scale),

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import math
-import textwrap
 from collections.abc import Callable
 from dataclasses import dataclass
 
 import pandas as pd
 
+from carrylab.report.numbers import digits_of
 from carrylab.report.table import (
     Cell,
     Line,
@@ -31,8 +31,6 @@ ROLE_WORDS = {
 STANDING = (
     "Slopes speak of variation in the spread: entity effects absorb standing premia, which the levels show instead."
 )
-SIGNAL_WIDTH = 20
-HORIZON_MIX = "Horizons or intervals differ between the columns, so no test across markets is given."
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -91,15 +89,34 @@ def side_by_side(findings: pd.DataFrame, *, title: str = "", parity: str | None 
         return None
     lines = [*_head(columns), *_shares(columns), *_tests(columns), *_levels(columns), *_sample(columns)]
     return Table(
-        title=f"{title}\n{HORIZON_MIX}" if _mixed(columns) else title,
+        title="\n".join(line for line in (title, *_caveat(columns)) if line),
         head=tuple(column.market for column in columns),
         lines=tuple(lines),
         notes=_notes(columns),
     )
 
 
-def _mixed(columns: list[Column]) -> bool:
-    return len({(column.horizon, column.rows.iloc[0]["interval"]) for column in columns}) > 1
+def _differing(columns: list[Column]) -> list[str]:
+    """What is not the same in all columns."""
+    first = {name: {str(column.rows.iloc[0][name]) for column in columns} for name in ("horizon", "interval")}
+    return [f"{name}s" for name, seen in first.items() if len(seen) > 1]
+
+
+def _caveat(columns: list[Column]) -> list[str]:
+    """The line under the title where columns are not alike."""
+    differing = _differing(columns)
+    samples = [] if len({_span(column) for column in columns}) == 1 else ["samples"]
+    if not differing + samples:
+        return []
+    *most, last = [*differing, *samples]
+    said = f"{', '.join(most)} and {last}" if most else last
+    end = ", so no test across markets is given." if differing else "."
+    return [f"{said.capitalize()} differ between the columns{end}"]
+
+
+def _span(column: Column) -> str:
+    row = column.rows.iloc[0]
+    return f"{row['first']} to {row['last']}"
 
 
 def _line(label: str, columns: list[Column], cell: Callable[[Column], Cell]) -> Line:
@@ -107,21 +124,11 @@ def _line(label: str, columns: list[Column], cell: Callable[[Column], Cell]) -> 
 
 
 def _head(columns: list[Column]) -> list[Line]:
-    def span(column: Column) -> Cell:
-        row = column.rows.iloc[0]
-        return word_cell(f"{row['first']} to {row['last']}")
-
-    signals = [textwrap.wrap(c.text("mean signal", "leg", section="summary"), SIGNAL_WIDTH) for c in columns]
-    deep = max(map(len, signals), default=0)
-    named = [
-        Line("" if at else "signal", tuple(word_cell(parts[at] if at < len(parts) else "") for parts in signals))
-        for at in range(deep)
-    ]
     return [
-        *named,
+        _line("signal", columns, lambda c: word_cell(c.text("mean signal", "leg", section="summary"))),
         _line("parity", columns, lambda c: word_cell(c.parity)),
         _line("horizon", columns, lambda c: word_cell(f"{c.horizon}, by {c.rows.iloc[0]['interval']}")),
-        _line("origins", columns, span),
+        _line("origins", columns, lambda c: word_cell(_span(c))),
     ]
 
 
@@ -137,8 +144,8 @@ def _shares(columns: list[Column]) -> list[Line]:
 
 def _share_lines(columns: list[Column], role: str, words: str) -> list[Line]:
     return [
-        _line(words, columns, lambda c: number_cell(_share(c, role)[0])),
-        _line("", columns, lambda c: error_cell(_share(c, role)[1])),
+        _line(words, columns, lambda c: number_cell(_share(c, role)[0], _digits(_share(c, role)[1]))),
+        _line("", columns, lambda c: error_cell(_share(c, role)[1], _digits(_share(c, role)[1]))),
         _line("  R2", columns, lambda c: number_cell(_r2(c, role), 3)),
     ]
 
@@ -151,6 +158,11 @@ def _share(column: Column, role: str) -> tuple[float, float]:
     if len(rows) > 1 and role == "fundamental":
         return column.number("all paid"), column.number("all paid", "std_error")
     return math.nan, math.nan
+
+
+def _digits(error: float) -> int:
+    """Decimals of a share: one more than usual where its error would print as zero."""
+    return min(digits_of(error), 3)
 
 
 def _r2(column: Column, role: str) -> float:
@@ -212,8 +224,8 @@ def _levels(columns: list[Column]) -> list[Line]:
     def summary(term: str, field: str = "estimate") -> Callable[[Column], float]:
         return lambda c: c.number(term, field, section="summary")
 
-    def mean_signal(column: Column) -> Cell:
-        value = summary("mean signal")(column)
+    def of_signal(column: Column, term: str) -> Cell:
+        value = summary(term)(column)
         return number_cell(value) if _is_ratio(column) else _level(column, value)
 
     mean, error, level = (
@@ -223,12 +235,12 @@ def _levels(columns: list[Column]) -> list[Line]:
     )
     return [
         Line("Levels over the horizon", heading=True),
-        _line("mean signal", columns, mean_signal),
+        _line("mean signal", columns, lambda c: of_signal(c, "mean signal")),
         _line("mean excess return", columns, lambda c: _level(c, mean(c))),
         _line("", columns, lambda c: error_cell(error(c) * (1 if c.parity == "columns" else 100))),
         _line("constant", columns, lambda c: _level(c, _constant(c))),
-        _line("sd of the signal, effects out", columns, lambda c: _level(c, summary("signal sd within")(c))),
-        _line("mean return / mean signal", columns, lambda c: Cell() if _is_ratio(c) else number_cell(level(c))),
+        _line("sd of the signal, effects out", columns, lambda c: of_signal(c, "signal sd within")),
+        _line("mean return / mean signal", columns, lambda c: number_cell(math.nan if _is_ratio(c) else level(c))),
     ]
 
 
@@ -267,11 +279,10 @@ def _sample(columns: list[Column]) -> list[Line]:
 def comparison_table(findings: pd.DataFrame, parity: str | None = None) -> Table | None:
     """Differences of the resolved premium shares with intervals, then the joint p; None where nothing compares."""
     columns = columns_of(findings, parity)
-    horizons = {column.horizon for column in columns}
     joint = findings[(findings["section"] == "joint") & (findings["group"] == "pooled")]
     joint = joint[joint["parity"] == (parity or "each market's own spread")]
-    joint = joint[joint["horizon"].isin(horizons)]
-    if len(horizons) > 1 or joint.empty:
+    joint = joint[joint["horizon"].isin([column.horizon for column in columns])]
+    if _differing(columns) or joint.empty:
         return None
     lines = [
         Line(
@@ -280,12 +291,15 @@ def comparison_table(findings: pd.DataFrame, parity: str | None = None) -> Table
         )
         for row in joint.to_dict("records")
     ]
-    methods = " / ".join(dict.fromkeys(joint["method"]))
+    methods = "; ".join(dict.fromkeys(joint["method"]))
     return Table(
         title=f"Resolved premium shares compared: {parity or 'own spreads'}, {joint['horizon'].iloc[0]}",
         head=("difference", "interval", "p"),
         lines=tuple(lines),
-        notes=(f"Equal shares across markets are implied by no theory: the comparison is descriptive. {methods}.",),
+        notes=(
+            "Equal shares across markets are implied by no theory: the comparison is descriptive.",
+            f"{methods[:1].upper()}{methods[1:]}.",
+        ),
     )
 
 

@@ -4,16 +4,20 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Literal
 
 from carrylab.report.numbers import count, fixed, in_brackets, in_parentheses, p_value, percent
+
+Kind = Literal["number", "interval", "words"]
 
 
 @dataclass(frozen=True, slots=True)
 class Cell:
-    """One cell: the raw number where it has one, and the text to print."""
+    """One cell: the text to print and the raw number where it has one. Numbers stand point over point, words wrap."""
 
     text: str = ""
     value: float = math.nan
+    kind: Kind = "number"
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,8 +52,8 @@ class Table:
 
 
 def number_cell(value: float, digits: int = 2) -> Cell:
-    """An estimate; the space after it lets its digits stand above those in parentheses."""
-    return Cell(fixed(value, digits) + " ", value)
+    """An estimate."""
+    return Cell(fixed(value, digits), value)
 
 
 def error_cell(value: float, digits: int = 2) -> Cell:
@@ -59,24 +63,24 @@ def error_cell(value: float, digits: int = 2) -> Cell:
 
 def interval_cell(lower: float, upper: float, digits: int = 2) -> Cell:
     """An interval in brackets; its raw value is the lower end."""
-    return Cell(in_brackets(lower, upper, digits), lower)
+    return Cell(in_brackets(lower, upper, digits), lower, "interval")
 
 
 def p_cell(value: float) -> Cell:
     """A p-value."""
-    return Cell(p_value(value) + " ", value)
+    return Cell(p_value(value), value)
 
 
 def percent_cell(value: float, digits: int = 2) -> Cell:
     """A decimal shown in percent."""
-    return Cell(percent(value, digits) + " ", value)
+    return Cell(percent(value, digits), value)
 
 
 def count_cell(value: float) -> Cell:
     """A whole number."""
-    return Cell(count(value) + " ", value)
+    return Cell(count(value), value)
 
 
 def word_cell(text: str) -> Cell:
     """A text."""
-    return Cell(text + " ")
+    return Cell(text, kind="words")

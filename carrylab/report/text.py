@@ -2,24 +2,40 @@
 
 from __future__ import annotations
 
+import itertools
+import math
+import re
 import textwrap
 from collections.abc import Iterable
+from dataclasses import dataclass
 
 import pandas as pd
-from tabulate import tabulate
+from tabulate import DataRow, TableFormat, tabulate
 
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
-from carrylab.report.table import Line, Table
+from carrylab.report.table import Cell, Table
 
+BETWEEN = "   "
+JOURNAL = TableFormat(None, None, None, None, DataRow("", BETWEEN, ""), DataRow("", BETWEEN, ""), 0, None)
 HEAD_WIDTH = 12
-GAP = 2
+# Words wrap at the first of these widths with which a table fits.
+WRAPS = (20, 18, 16, 14, 13, 12, 10)
 CAUTIONS = (
     "Not investment advice. Everything here is in sample, and a premium in sample is no forecast.",
     "Before costs, margin, tax and capital controls. Carry earns little by little and loses in crashes; a peg that "
     "held says nothing about the day it breaks.",
     "Horizons, markets and countries are not independent evidence. Local rules may ask for licensed advice.",
 )
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Block:
+    """Printed cells: `rows` of equal length, the first `head` of them the head, and the `width` they need."""
+
+    rows: list[list[str]]
+    head: int
+    width: int
 
 
 def report_text(findings: pd.DataFrame, *, title: str, width: int = 100, audit: Iterable[str] = ()) -> str:
@@ -61,49 +77,82 @@ def _wrapped(text: str, width: int, indent: str) -> str:
 
 
 def table_text(table: Table, width: int) -> str:
-    """One table; where it is too wide its columns are set in blocks beneath each other."""
-    notes = [_wrapped(note, max(width, 60), "") for note in table.notes]
-    return "\n".join([table.title, *(_block(part) for part in _blocks(table, width)), *notes])
+    """One table with its title and notes; where it is too wide, blocks of its columns stand beneath each other."""
+    title = [_wrapped(line, width, "") for line in table.title.splitlines()]
+    notes = [_wrapped(note, width, "") for note in table.notes]
+    return "\n".join([*title, *map(_printed, _blocks(table, width)), *notes])
 
 
-def _blocks(table: Table, width: int) -> list[Table]:
-    """As many columns in each block as fit, evenly shared out."""
-    label = max(map(len, [table.corner, *(_label(line) for line in table.lines if not line.heading)]))
-    sizes = [GAP + max(map(len, [*_head(table, at), *_texts(table, at)])) for at in range(len(table.head))]
-    fit = len(sizes)
-    while fit > 1 and any(label + sum(sizes[at : at + fit]) > width for at in range(0, len(sizes), fit)):
-        fit -= 1
-    return [table.columns(slice(at, at + fit)) for at in range(0, len(sizes), fit)]
+def _blocks(table: Table, width: int) -> list[Block]:
+    """The fewest blocks that fit, columns shared out evenly, in the widest wrapping of their words that does."""
+    columns = len(table.head)
+    laid: list[Block] = []
+    for count in range(1, columns + 1):
+        size = math.ceil(columns / count)
+        parts = [table.columns(slice(at, at + size)) for at in range(0, columns, size)]
+        for limit in WRAPS:
+            laid = [_laid(part, limit) for part in parts]
+            if max(block.width for block in laid) <= width:
+                return laid
+    return laid
 
 
-def _texts(table: Table, at: int) -> list[str]:
-    return [line.cells[at].text for line in table.lines if line.cells]
+def _laid(table: Table, limit: int) -> Block:
+    """Every cell in lines of at most `limit` characters where its words allow; heads stand on their rule."""
+    lines = table.filled()
+    labels = [line.label if line.heading else f"  {line.label}" if line.label else "" for line in lines]
+    bodies = [
+        _body([line.cells[at] if line.cells else Cell() for line in lines], limit) for at in range(len(table.head))
+    ]
+    heads = [_head(name, body, limit) for name, body in zip(table.head, bodies, strict=True)]
+    deep = max(map(len, heads))
+    rows = _rows([[""] * (deep - 1) + [table.corner], *([""] * (deep - len(head)) + head for head in heads)])
+    for number, label in enumerate(labels):
+        rows += _rows([[label], *(body[number] for body in bodies)])
+    wide = sum(max(map(len, side)) for side in zip(*rows, strict=True))
+    return Block(rows, deep, wide + len(BETWEEN) * len(heads))
 
 
-def _head(table: Table, at: int) -> list[str]:
-    """The head of a column in lines no wider than its cells need."""
-    wide = max([HEAD_WIDTH, *map(len, _texts(table, at))])
-    return [f"{part} " for part in textwrap.wrap(table.head[at], wide, break_long_words=False)]
+def _body(cells: list[Cell], limit: int) -> list[list[str]]:
+    """Lines of every cell of a column; numbers are filled up so that their points stand below each other."""
+    longest = max((len(_tail(cell)) for cell in cells), default=0)
+    return [
+        _lines(cell.text, limit)
+        if cell.kind == "words"
+        else [cell.text + " " * (longest - len(_tail(cell)) if cell.kind == "number" and cell.text else 0)]
+        for cell in cells
+    ]
 
 
-def _block(table: Table) -> str:
-    """Head and body between rules, set by tabulate."""
-    heads = [_head(table, at) for at in range(len(table.head))]
-    deep = max(len(parts) for parts in heads)
-    padded = [[""] * (deep - len(parts)) + parts for parts in heads]
-    rows = [[table.corner if at == deep - 1 else "", *(parts[at] for parts in padded)] for at in range(deep)]
-    rows += [[_label(line), *(cell.text for cell in line.cells)] for line in table.filled()]
+def _head(name: str, body: list[list[str]], limit: int) -> list[str]:
+    """Lines of a head, no wider than the column needs."""
+    return _lines(name, max([min(limit, HEAD_WIDTH), *(len(line) for lines in body for line in lines)]))
+
+
+def _rows(cells: list[list[str]]) -> list[list[str]]:
+    """Cells of several lines as rows of one line each."""
+    return [list(row) for row in itertools.zip_longest(*cells, fillvalue="")]
+
+
+def _tail(cell: Cell) -> str:
+    """What stands from the decimal point on."""
+    found = re.search(r"(\.\d+)?\)?$", cell.text) if cell.kind == "number" else None
+    return found[0] if found else ""
+
+
+def _lines(text: str, limit: int) -> list[str]:
+    return textwrap.wrap(text, limit, break_long_words=False) or [""]
+
+
+def _printed(block: Block) -> str:
+    """Head and body between rules."""
     text = tabulate(
-        [row + [""] * (1 + len(table.head) - len(row)) for row in rows],
-        tablefmt="plain",
+        block.rows,
+        tablefmt=JOURNAL,
         disable_numparse=True,
-        colalign=("left", *("right",) * len(table.head)),
+        colalign=("left", *("right",) * (len(block.rows[0]) - 1)),
         preserve_whitespace=True,
     )
-    printed = [line.rstrip() for line in text.splitlines()]
-    rule = "-" * max(map(len, printed))
-    return "\n".join([rule, *printed[:deep], rule, *printed[deep:], rule])
-
-
-def _label(line: Line) -> str:
-    return line.label if line.heading else f"  {line.label}" if line.label else ""
+    lines = [line.rstrip() for line in text.splitlines()]
+    rule = "-" * block.width
+    return "\n".join([rule, *lines[: block.head], rule, *lines[block.head :], rule])
