@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import csv
 import hashlib
 import json
 import platform
 import tempfile
+from collections import Counter
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from importlib import metadata
 from importlib.util import find_spec
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 import numpy.typing as npt
@@ -23,6 +25,7 @@ from carrylab.findings import COLUMNS, TEXTS
 FORMAT = "carrylab run 1"
 PACKAGES = ("carrylab", "numpy", "pandas", "scipy", "tabulate", "linearmodels", "statsmodels")
 NUMBERS = tuple(name for name in COLUMNS if name not in TEXTS)
+FILES = ("report.txt", "findings.csv", "findings.parquet", "panel.csv", "run.json")
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\0")
 
 
@@ -40,7 +43,8 @@ def save(run: Run, directory: Path, *, parquet: bool) -> Path:
     """Write the run folder beside its place and rename it into place when it is whole.
 
     findings.parquet is written wherever pyarrow is installed; `parquet` insists on it (ExtraError).
-    An older run folder of the same name is replaced; any other folder or file of that name is refused.
+    An older run folder of the same name is replaced; any other folder or file of that name is refused, and so is a
+    run folder that holds anything else (DataError).
     """
     require_place(directory, parquet=parquet)
     try:
@@ -55,10 +59,20 @@ def _saved(run: Run, directory: Path) -> Path:
         fresh = Path(made) / "run"
         fresh.mkdir()
         _write(run, fresh, parquet=_can_write_parquet())
-        if directory.exists():
-            directory.rename(Path(made) / "old")
-        fresh.rename(directory)
+        _put_in_place(fresh, directory, aside=Path(made) / "old")
     return directory
+
+
+def _put_in_place(fresh: Path, directory: Path, *, aside: Path) -> None:
+    """Rename the new folder into place; a stop or an error in between brings the old one back."""
+    try:
+        if directory.exists():
+            directory.rename(aside)
+        fresh.rename(directory)
+    except BaseException:
+        if aside.exists() and not directory.exists():
+            aside.rename(directory)
+        raise
 
 
 def _can_write_parquet() -> bool:
@@ -71,9 +85,17 @@ def require_place(directory: Path, *, parquet: bool) -> None:
         raise ExtraError("findings.parquet needs pyarrow; install carrylab with its parquet extra")
     if not directory.exists():
         return
-    if directory.is_dir() and (not any(directory.iterdir()) or _is_run(directory)):
-        return
-    raise DataError(f"{directory}: exists and is no run folder of carrylab; name another with --into, or move it away")
+    inside = [entry.name for entry in directory.iterdir()] if directory.is_dir() else [directory.name]
+    if inside and not _is_run(directory):
+        raise DataError(
+            f"{directory}: exists and is no run folder of carrylab; name another with --into, or move it away"
+        )
+    # Hidden files are a file manager's own.
+    others = sorted(name for name in inside if name not in FILES and not name.startswith("."))
+    if others:
+        raise DataError(
+            f"{directory}: holds {others[0]!r}, which no run wrote; move it away, or name another folder with --into"
+        )
 
 
 def _is_run(directory: Path) -> bool:
@@ -96,15 +118,25 @@ def _write(run: Run, folder: Path, *, parquet: bool) -> None:
 def write_csv(frame: pd.DataFrame, path: Path) -> None:
     """UTF-8, LF, shortest exact numbers; texts that a spreadsheet would take for a formula get a leading quote."""
     guarded = frame.copy()
-    for name in guarded.columns:
-        if not pd.api.types.is_numeric_dtype(guarded[name]):
-            guarded[name] = _mapped(guarded[name], _guard)
-    guarded.to_csv(path, index=False, encoding="utf-8", lineterminator="\n")
+    texts = [name for name in guarded.columns if not pd.api.types.is_numeric_dtype(guarded[name])]
+    for name in texts:
+        guarded[name] = _mapped(guarded[name], _guard)
+    guarded.columns = pd.Index([_guard(str(name)) for name in guarded.columns])
+    # Before Python 3.13 a lone carriage return is not quoted of itself and would end the line.
+    distinct = [*guarded.columns, *(text for name in texts for text in pd.unique(guarded[_guard(str(name))]))]
+    quoting: Literal[0, 2] = csv.QUOTE_NONNUMERIC if any("\r" in text for text in distinct) else csv.QUOTE_MINIMAL
+    guarded.to_csv(path, index=False, encoding="utf-8", lineterminator="\n", quoting=quoting)
 
 
 def read_findings(path: Path) -> pd.DataFrame:
-    """The findings of a run folder's CSV, exactly as they were."""
-    frame = pd.read_csv(path, dtype=str, keep_default_na=False, na_filter=False)
+    """The findings of a run folder's CSV, exactly as they were; DataError where the file is no such table."""
+    try:
+        frame = pd.read_csv(path, dtype=str, keep_default_na=False, na_filter=False)
+    except (OSError, ValueError) as wrong:
+        raise DataError(f"{path}: cannot be read ({wrong}); give the findings.csv of a run folder") from None
+    missing = [name for name in COLUMNS if name not in frame.columns]
+    if missing:
+        raise DataError(f"{path}: has no column {missing[0]!r}; give the findings.csv of a run folder")
     for name in NUMBERS:
         frame[name] = np.array([float(text or "nan") for text in frame[name]])
     for name in TEXTS:
@@ -127,8 +159,11 @@ def _unguard(text: str) -> str:
 
 
 def hashes(paths: Iterable[Path]) -> dict[str, str]:
-    """SHA-256 of each file, by name."""
-    return {path.name: hashlib.sha256(path.read_bytes()).hexdigest() for path in sorted(set(paths))}
+    """SHA-256 of each file, by name; files that share a name are told apart by their folders."""
+    files = sorted(set(paths))
+    shared = Counter(path.name for path in files)
+    names = [path.name if shared[path.name] == 1 else path.as_posix() for path in files]
+    return {name: hashlib.sha256(path.read_bytes()).hexdigest() for name, path in zip(names, files, strict=True)}
 
 
 def versions() -> dict[str, str]:
