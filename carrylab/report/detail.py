@@ -65,6 +65,7 @@ def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:
         lines=tuple(Line(line.label, line.cells[shown]) for line in lines),
         notes=(*_detail_notes(headline), *_resolved_note(rows), *_joint_notes(joint)),
         corner="slopes",
+        unit=3 if own_p else 2,
     )
 
 

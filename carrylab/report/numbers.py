@@ -22,14 +22,14 @@ def fixed(value: float, digits: int = 2) -> str:
 
 
 def digits_of(error: float, least: int = 2) -> int:
-    """Decimals that show two figures of a standard error, at least `least`.
+    """Decimals that show two figures of a standard error too small for `least` of them, else `least`.
 
     >>> digits_of(0.21), digits_of(0.0004)
     (2, 5)
     """
-    if not 0 < error < 0.1**least:
+    if not 0 < error < 10.0**-least:
         return least
-    return math.floor(-math.log10(error)) + 2
+    return math.ceil(-math.log10(error)) + 1
 
 
 def percent(value: float, digits: int = 2) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 from carrylab.report.numbers import count, fixed, in_brackets, in_parentheses, p_value, percent
@@ -31,13 +31,17 @@ class Line:
 
 @dataclass(frozen=True, slots=True)
 class Table:
-    """A title, the heads of the columns after the label column, lines, and notes beneath."""
+    """A title, the heads of the columns after the label column, lines, and notes beneath.
+
+    Where columns must be set in blocks, each run of `unit` columns from the left stays in one block.
+    """
 
     title: str
     head: tuple[str, ...]
     lines: tuple[Line, ...]
     notes: tuple[str, ...] = ()
     corner: str = ""
+    unit: int = 1
 
     def filled(self) -> tuple[Line, ...]:
         """The lines that say something: those with more than dashes in them, and headings with such lines below."""
@@ -48,7 +52,7 @@ class Table:
     def columns(self, chosen: slice) -> Table:
         """The same table with some of its columns."""
         lines = tuple(Line(line.label, line.cells[chosen], line.heading) for line in self.lines)
-        return Table(self.title, self.head[chosen], lines, self.notes, self.corner)
+        return replace(self, head=self.head[chosen], lines=lines)
 
 
 def number_cell(value: float, digits: int = 2) -> Cell:

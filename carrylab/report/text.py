@@ -85,11 +85,11 @@ def table_text(table: Table, width: int) -> str:
 
 def _blocks(table: Table, width: int) -> list[Block]:
     """The fewest blocks that fit, columns shared out evenly, in the widest wrapping of their words that does."""
-    columns = len(table.head)
+    units = math.ceil(len(table.head) / table.unit)
     laid: list[Block] = []
-    for count in range(1, columns + 1):
-        size = math.ceil(columns / count)
-        parts = [table.columns(slice(at, at + size)) for at in range(0, columns, size)]
+    for count in range(1, units + 1):
+        cuts = [round(units * at / count) * table.unit for at in range(count + 1)]
+        parts = [table.columns(slice(*pair)) for pair in itertools.pairwise(cuts)]
         for limit in WRAPS:
             laid = [_laid(part, limit) for part in parts]
             if max(block.width for block in laid) <= width:

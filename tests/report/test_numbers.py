@@ -37,4 +37,5 @@ def test_p_values(p: float, text: str) -> None:
 
 
 def test_digits_follow_the_error() -> None:
-    assert [numbers.digits_of(error) for error in (0.2, 0.03, 0.004, 0.0005, 0.0, math.nan)] == [2, 2, 4, 5, 2, 2]
+    assert [numbers.digits_of(error) for error in (0.2, 0.03, 0.01, 0.004, 0.001, 0.0005)] == [2, 2, 2, 4, 4, 5]
+    assert [numbers.digits_of(error) for error in (0.0, math.nan, math.inf)] == [2, 2, 2]
