@@ -143,9 +143,10 @@ def _shares(columns: list[Column]) -> list[Line]:
 
 
 def _share_lines(columns: list[Column], role: str, words: str) -> list[Line]:
+    found = [_share(column, role) for column in columns]
     return [
-        _line(words, columns, lambda c: number_cell(_share(c, role)[0], _digits(_share(c, role)[1]))),
-        _line("", columns, lambda c: error_cell(_share(c, role)[1], _digits(_share(c, role)[1]))),
+        Line(words, tuple(number_cell(share, _digits(error)) for share, error in found)),
+        Line("", tuple(error_cell(error, _digits(error)) for _, error in found)),
         _line("  R2", columns, lambda c: number_cell(_r2(c, role), 3)),
     ]
 
