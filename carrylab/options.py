@@ -158,6 +158,79 @@ class Market:
 
 
 @dataclass(frozen=True, slots=True)
+class Profile:
+    """Every horizon from one `every` (None: one step) to `until`; `common_sample`: origins that all of them share."""
+
+    until: Tenor
+    every: Tenor | None = None
+    common_sample: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Windows:
+    """Lengths of rolling windows and of the first expanding window, None for none; a window ends each `every`."""
+
+    rolling: Tenor | None = None
+    expanding: Tenor | None = None
+    every: Tenor | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Breaks:
+    """One unknown break of the slope: the share of dates at either end in which none is looked for."""
+
+    trim: float = 0.15
+
+
+@dataclass(frozen=True, slots=True)
+class Forecast:
+    """Out of sample: length of the first training sample, of a rolling one (None: recursive only), risk aversion."""
+
+    first: Tenor
+    rolling: Tenor | None = None
+    risk_aversion: float = 3.0
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """A labelled series by date from a file, or a `rule` over a series; `known` false where it is dated afterwards."""
+
+    name: str
+    source: Source | None = None
+    rule: str | None = None
+    known: bool = True
+
+
+@dataclass(frozen=True, slots=True)
+class Period:
+    """A named subsample of origins, both ends included."""
+
+    name: str
+    first: str | None = None
+    last: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Questions:
+    """What a study asks beyond the headline; empty where it asks nothing more.
+
+    `years`: leave each year out in turn. `parts`: the slope's static, dynamic and common parts. `across`: signals of
+    each market against the returns of all. `components`: principal components of the curve beside the signal.
+    """
+
+    horizons: Profile | None = None
+    windows: Windows | None = None
+    breaks: Breaks | None = None
+    forecast: Forecast | None = None
+    years: bool = False
+    parts: bool = False
+    across: bool = False
+    components: int | None = None
+    states: tuple[State, ...] = ()
+    periods: tuple[Period, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class Study:
     """A whole study file, checked. `economies` maps an economy to its currency; `text` is the file as read."""
 
@@ -167,3 +240,4 @@ class Study:
     home: str | None
     economies: Mapping[str, str]
     markets: tuple[Market, ...]
+    questions: Questions = Questions()

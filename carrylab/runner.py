@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -16,8 +16,10 @@ from carrylab.data.checks import Check, check_market
 from carrylab.data.panel import curves
 from carrylab.data.read import MarketData, Table, read_market
 from carrylab.errors import DataError, StudyError
+from carrylab.evidence import asked
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
+from carrylab.evidence.case import Case
 from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
@@ -32,7 +34,7 @@ from carrylab.markets.columns import predictor
 from carrylab.markets.curves import YieldCurves
 from carrylab.markets.parity import Entity, Leg, Parity, identity
 from carrylab.markets.proof import identity_check
-from carrylab.options import Inference, Market, Study
+from carrylab.options import Inference, Market, Questions, Study
 from carrylab.regression.covariance import ErrorOptions
 from carrylab.regression.fit import fit
 from carrylab.regression.sample import Floats, OneStep, Sample, make_sample, take
@@ -57,9 +59,9 @@ class Built:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Fitted:
-    """Every fit of one market, and the terms (T, N, K) of each parity with holes."""
+    """Every fit of one market by parity and horizon, its samples, and its rows."""
 
-    fits: tuple[Fit, ...]
+    cases: tuple[Case, ...]
     samples: tuple[tuple[str, Sample], ...]
     rows: tuple[Row, ...]
 
@@ -83,9 +85,11 @@ def run(study: Study, *, audit: bool = False, progress: Progress | None = None) 
     fitted = []
     for one in built:
         say(f"estimating {one.market.name}")
-        fitted.append(estimate(one, study.economies))
+        fitted.append(estimate(one, study.economies, study.questions))
     rows = [row for one, done in zip(built, fitted, strict=True) for row in (*_accounts(one), *done.rows)]
-    rows += _across([fit for done in fitted for fit in done.fits])
+    cases = [case for done in fitted for case in done.cases]
+    rows += _across([fit for case in cases for fit in case.fits])
+    rows += asked.study_rows(cases, study.questions)
     timings["estimate"] = time.perf_counter() - clock
     audited = _audited(built, fitted, say) if audit else None
     return Results(
@@ -204,25 +208,46 @@ def _one_step(leg: Leg, steps: int) -> OneStep | None:
     return OneStep(leg.one_step, weights)
 
 
-def estimate(built: Built, economies: Mapping[str, str]) -> Fitted:
+def estimate(built: Built, economies: Mapping[str, str], questions: Questions | None = None) -> Fitted:
     """Fit every parity of one market, pooled and by group, and write its rows."""
-    prepared = [(parity, *sample_of(parity, built.data)) for parity in built.parities]
-    families = [tuple(_fits(parity, sample, built.market)) for parity, sample, _ in prepared]
+    cases = tuple(_case(parity, built, economies) for parity in built.parities)
+    families = [case.fits for case in cases]
     drawn = _drawn(built, families)
     rows = list(drawn.rows)
     said = [AVERAGED] if is_averaged(built.data) else []
     said += [drawn.refused] if drawn.refused else []
-    for family, (parity, _, terms) in zip(families, prepared, strict=True):
+    for case in cases:
+        family, parity = case.fits, case.parity
         other = parity.name in drawn.parities
         rows += [
             row for one in family for row in (*share_rows(one, drawn=other), *summary_rows(one, said), *other_rows(one))
         ]
         rows += group_rows(family[1:])
         rows += regression_ledger_rows(family[0])
-        rows += latest_rows(family[0], terms)
+        rows += latest_rows(family[0], case.terms)
         rows += _other_rho(parity, built, economies)
-    fits = tuple(one for family in families for one in family)
-    return Fitted(fits, tuple((one.sample.label, one.sample) for one in fits), tuple(rows))
+        rows += asked.case_rows(case, questions or Questions())
+    samples = tuple((one.sample.label, one.sample) for family in families for one in family)
+    return Fitted(cases, samples, tuple(rows))
+
+
+def _case(parity: Parity, built: Built, economies: Mapping[str, str]) -> Case:
+    """One parity with its fits, pooled and by group."""
+    sample, terms = sample_of(parity, built.data)
+    fits = tuple(_fits(parity, sample, built.market))
+    return Case(parity, fits, terms, error_options(built.market.inference), _rebuild(parity, built, economies))
+
+
+def _rebuild(parity: Parity, built: Built, economies: Mapping[str, str]) -> Callable[[Sequence[Tenor]], list[Case]]:
+    """What builds one parity again at other horizons, with its pooled fit alone."""
+
+    def at_horizons(horizons: Sequence[Tenor]) -> list[Case]:
+        other = replace(built.market, horizons=tuple(horizons), parities=(parity.name,), by="pooled")
+        data = replace(built.data, market=other)
+        again = [_kept(one, other) for one in MARKETS[other.kind](data, economies)]
+        return [_case(one, replace(built, market=other, data=data), economies) for one in again]
+
+    return at_horizons
 
 
 def _drawn(built: Built, families: list[tuple[Fit, ...]]) -> DrawnRows:

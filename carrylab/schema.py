@@ -103,6 +103,13 @@ def number(low: float, high: float) -> Reader:
     return read
 
 
+def switch(value: Any) -> bool:
+    """True or false."""
+    if not isinstance(value, bool):
+        raise NotAllowedError("allowed: true, false")
+    return value
+
+
 def whole(low: int, high: int = 10**9) -> Reader:
     """A whole number from `low` to `high`."""
 

@@ -59,6 +59,7 @@ PRICE: dict[str, Reader] = {
 }
 DIVIDEND: dict[str, Reader] = {**SERIES, "basis": choice(get_args(options.Basis))}
 CONTROL: dict[str, Reader] = {**SERIES, "name": text}
+STATE: dict[str, Reader] = {**SERIES}
 ROLES: dict[str, dict[str, Reader]] = {
     "zero_yields": RATE,
     "deposits": RATE,
@@ -173,6 +174,11 @@ def read_controls(raw: Any, at: tuple[Path, str], problems: Problems) -> tuple[S
         if len(problems.lines) == before:
             controls.append(_declare(values.pop("name"), values, path))
     return tuple(controls)
+
+
+def state_source(values: dict[str, Any], name: str, path: Path) -> Source:
+    """The file of a state: a labelled series by date, or spells with from and until."""
+    return _declare(name, values, path)
 
 
 def read_panel_columns(

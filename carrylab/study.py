@@ -12,6 +12,7 @@ from carrylab import options
 from carrylab.data.calendar import INTERVALS, MONTHS_IN, Tenor, steps_in
 from carrylab.errors import StudyError
 from carrylab.options import PARITIES, Inference, Market, Study
+from carrylab.questions import read_questions
 from carrylab.schema import (
     Problems,
     Reader,
@@ -81,6 +82,9 @@ TOP: dict[str, Reader] = {
     "economies": mapping(text),
     "inference": lambda value: value,
     "market": lambda value: value,
+    "evidence": lambda value: value,
+    "state": lambda value: value,
+    "period": lambda value: value,
 }
 DATA_RULES = ("missing_maturity", "missing_tenor", "controls")
 RENAMED = {"from": "first", "until": "last", "indices": "index_economy"}
@@ -104,6 +108,7 @@ def read_study(path: str | os.PathLike[str]) -> Study:
     names = [market.name for market in markets if market]
     for name in sorted({name for name in names if names.count(name) > 1}):
         problems.add(f"market {name!r}, key name", "two markets have this name; each needs its own")
+    questions = read_questions(top, where, problems)
     if problems.lines:
         raise StudyError("\n".join(problems.lines))
     return Study(
@@ -113,6 +118,7 @@ def read_study(path: str | os.PathLike[str]) -> Study:
         home=top.get("home"),
         economies=top.get("economies", {}),
         markets=tuple(market for market in markets if market),
+        questions=questions,
     )
 
 

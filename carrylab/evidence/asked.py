@@ -1,0 +1,23 @@
+"""The further questions of a study: every function that answers one, and the rows they all give."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+from carrylab.evidence.case import Case
+from carrylab.evidence.setting import Row
+from carrylab.options import Questions
+
+# Each returns no rows where its question is not asked.
+OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = ()
+OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = ()
+
+
+def case_rows(case: Case, asked: Questions) -> list[Row]:
+    """Rows of every question that one parity answers on its own."""
+    return [row for answer in OF_ONE_PARITY for row in answer(case, asked)]
+
+
+def study_rows(cases: Sequence[Case], asked: Questions) -> list[Row]:
+    """Rows of every question that takes all markets together."""
+    return [row for answer in OF_ALL_MARKETS for row in answer(cases, asked)]

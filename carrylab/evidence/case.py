@@ -1,0 +1,46 @@
+"""What every further question is asked of: one parity with its fits, and ways to fit it again."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+
+from carrylab.data.calendar import Tenor
+from carrylab.evidence.setting import Fit, errors_of
+from carrylab.markets.parity import Parity
+from carrylab.regression.covariance import ErrorOptions
+from carrylab.regression.fit import fit
+from carrylab.regression.sample import Floats
+
+Rebuild = Callable[[Sequence[Tenor]], "list[Case]"]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Case:
+    """One parity of one market at one horizon.
+
+    `fits`: the pooled fit first, then one a group. `terms` (T, N, K): signal and added predictors with their holes,
+    as known at each origin. `errors` as the study chose them. `at_horizons` builds the same parity at other horizons
+    from the same data, each with its pooled fit alone.
+    """
+
+    parity: Parity
+    fits: tuple[Fit, ...]
+    terms: Floats
+    errors: ErrorOptions
+    at_horizons: Rebuild
+
+    @property
+    def pooled(self) -> Fit:
+        """The pooled fit."""
+        return self.fits[0]
+
+
+def weighted(one: Fit, weights: Floats, errors: ErrorOptions, name: str) -> Fit:
+    """The same regression under date weights (T,): a state, a window or a subsample, with its own errors.
+
+    Raises SampleError where these dates cannot carry it.
+    """
+    found = fit(one.sample, effects=one.estimate.effects, weights=weights)
+    headline, away, second = errors_of(one.sample, found, errors)
+    return replace(one, estimate=found, headline=headline, away=away, second=second, name=name)
