@@ -59,6 +59,8 @@ COLUMNS: tuple[str, ...] = (
 )
 COUNTS: tuple[str, ...] = ("n_dates", "n_entities", "n_obs", "lags")
 KEY: tuple[str, ...] = ("section", "rank", "market", "parity", "leg", "horizon", "group", "sample", "term")
+# How a note begins where the p-value beside it rests on too little; reports mark such a p.
+DOUBTFUL = "p in doubt: "
 Row = Mapping[str, Any]
 
 

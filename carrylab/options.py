@@ -113,7 +113,8 @@ class PanelColumns:
 class Inference:
     """How standard errors are made. `lags` and `factor` of None mean the stated rule of the error kind.
 
-    `draws` under the null stand behind the second opinion; 0 means none.
+    `draws` under the null: None makes as many as a printed p-value needs in a market where the automatic choice of
+    errors calls for them, and none elsewhere; 0 means none.
     """
 
     errors: Errors = "auto"
@@ -121,7 +122,7 @@ class Inference:
     factor: Factor | None = None
     reference: Reference | None = None
     confidence: float = 0.95
-    draws: int = 0
+    draws: int | None = None
     seed: int = 7
 
 

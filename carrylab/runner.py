@@ -36,6 +36,7 @@ from carrylab.markets.parity import Entity, Leg, Parity, identity
 from carrylab.markets.proof import identity_check
 from carrylab.options import Inference, Market, Questions, Study
 from carrylab.regression.covariance import ErrorOptions
+from carrylab.regression.draws import FOR_PRINT
 from carrylab.regression.fit import fit
 from carrylab.regression.sample import Floats, OneStep, Sample, make_sample, take
 from carrylab.results import Results
@@ -231,6 +232,13 @@ def estimate(built: Built, economies: Mapping[str, str], questions: Questions | 
     return Fitted(cases, samples, tuple(rows))
 
 
+def draws_of(inference: Inference, families: Sequence[Sequence[Fit]]) -> int:
+    """How many draws to make: as asked, or enough for print where the automatic choice of errors calls for them."""
+    if inference.draws is not None:
+        return inference.draws
+    return FOR_PRINT if any(family[0].errors.needs_draws for family in families) else 0
+
+
 def _case(parity: Parity, built: Built, economies: Mapping[str, str]) -> Case:
     """One parity with its fits, pooled and by group."""
     sample, terms = sample_of(parity, built.data)
@@ -253,7 +261,7 @@ def _rebuild(parity: Parity, built: Built, economies: Mapping[str, str]) -> Call
 def _drawn(built: Built, families: list[tuple[Fit, ...]]) -> DrawnRows:
     """Rows of the draws under the null: of whole curves for bonds, of returns and signals for all else."""
     market = built.market
-    count, seed = market.inference.draws, market.inference.seed
+    count, seed = draws_of(market.inference, families), market.inference.seed
     if market.kind != "bonds" or not count:
         return drawn_rows(families, count, seed)
     quoted = curves(built.data.tables["zero_yields"], built.data.calendar, "economy", "maturity")
@@ -275,8 +283,8 @@ def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:
 def _fit(parity: Parity, sample: Sample, group: str, market: Market, name: str = "all") -> Fit:
     options = error_options(market.inference)
     found = fit(sample, effects=market.effects)
-    errors = errors_of(sample, found, options)
-    return Fit(parity, group, sample, found, *errors, market.inference.confidence, name)
+    errors = errors_of(parity, sample, found, options)
+    return Fit(parity, group, sample, found, errors, market.inference.confidence, name)
 
 
 def error_options(inference: Inference) -> ErrorOptions:

@@ -121,6 +121,16 @@ def whole(low: int, high: int = 10**9) -> Reader:
     return read
 
 
+def draws(value: Any) -> int:
+    """A number of draws: none, or enough for a p-value of .02."""
+    if value != 0 or isinstance(value, bool):
+        try:
+            return int(whole(99)(value))
+        except NotAllowedError:
+            raise NotAllowedError("allowed is 0 for none, or a whole number from 99") from None
+    return 0
+
+
 def tenor(value: Any) -> Tenor:
     """A length of time above zero, such as 12m."""
     try:

@@ -17,6 +17,7 @@ from carrylab.schema import (
     Problems,
     Reader,
     choice,
+    draws,
     mapping,
     nearest,
     number,
@@ -141,7 +142,7 @@ def _load(path: Path) -> tuple[dict[str, Any], str]:
 
 
 def _inference(raw: Any, problems: Problems) -> dict[str, Any]:
-    readers = {**INFERENCE, "confidence": number(0, 1), "draws": whole(99), "seed": whole(0)}
+    readers = {**INFERENCE, "confidence": number(0, 1), "draws": draws, "seed": whole(0)}
     return read_table(raw, readers, "[inference]", problems)
 
 

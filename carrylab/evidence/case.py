@@ -42,5 +42,4 @@ def weighted(one: Fit, weights: Floats, errors: ErrorOptions, name: str) -> Fit:
     Raises SampleError where these dates cannot carry it.
     """
     found = fit(one.sample, effects=one.estimate.effects, weights=weights)
-    headline, away, second = errors_of(one.sample, found, errors)
-    return replace(one, estimate=found, headline=headline, away=away, second=second, name=name)
+    return replace(one, estimate=found, errors=errors_of(one.parity, one.sample, found, errors), name=name)

@@ -10,6 +10,7 @@ import numpy as np
 
 from carrylab.errors import InferenceError
 from carrylab.evidence.setting import EFFECTS, Fit, Row
+from carrylab.markets.parity import Leg
 from carrylab.regression.draws import Case, Draws, draw
 from carrylab.regression.draws_measure import Question
 from carrylab.regression.draws_tests import band, bias_corrected, equal_tailed, rarity, stepdown, upper_band
@@ -127,23 +128,30 @@ def _rows(fit: Fit, said: Drawn, h: int) -> list[Row]:
     place = fit.place() | {"leg": leg.name, "role": leg.role}
     slope = float(fit.estimate.coefficients[0, at])
     test = {
-        "rank": "second opinion",
-        "section": "shares",
         "estimate": slope,
         "std_error": float(fit.headline.std_error[0, at]),
         "statistic": float(said.statistic[h]),
         "p_value": float(said.p_value[h]),
         "null": leg.null,
-        "method": method,
     }
     lower, upper = (float(end) for end in said.slope_band[:, h])
     draws = place | {"section": "draws", "method": said.words}
-    shares = [place | test | {"term": "nothing paid", "estimate": leg.weight * slope}] if leg.weight is not None else []
     return [
-        place | test | {"term": "signal", "r2": float(fit.estimate.r2[at])},
-        *shares,
+        *_ranked(fit, leg, place | test | {"method": method, "r2": float(fit.estimate.r2[at])}),
+        draws | test | {"term": "nothing paid"},
         draws | {"term": "bias-corrected slope", "estimate": float(said.slope[h])},
         draws | {"term": "slope by chance", "lower": lower, "upper": upper},
         draws | {"term": "R2 by chance", "estimate": float(said.r2_band[h]), "note": "95th percentile under the null"},
         draws | {"term": "stepdown", "p_value": float(said.adjusted[h]), "note": "over all hypotheses of the market"},
     ]
+
+
+def _ranked(fit: Fit, leg: Leg, test: Row) -> list[Row]:
+    """The draws' test as headline or second opinion of section `shares`, where the choice of errors puts it there."""
+    row = test | {"section": "shares", "rank": fit.errors.draws}
+    share = None if leg.weight is None else leg.weight * row["estimate"]
+    why = f"; chosen because {fit.errors.why}" if fit.errors.why else ""
+    paid = [row | {"term": "nothing paid", "estimate": share, "r2": None}] if share is not None else []
+    if fit.errors.draws == "headline":
+        return [one | {"method": one["method"] + why} for one in paid]
+    return [row | {"term": "signal"}, *paid] if fit.errors.draws == "second opinion" else []

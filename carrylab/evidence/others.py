@@ -8,7 +8,7 @@ from collections.abc import Callable, Iterator
 import numpy as np
 
 from carrylab.errors import InferenceError, SampleError
-from carrylab.evidence.setting import Fit, Row, tested
+from carrylab.evidence.setting import Fit, Row, judged, tested
 from carrylab.regression.amihud_hurvich import amihud_hurvich
 from carrylab.regression.ivx import ivx
 from carrylab.regression.jackknife import half_panel, half_panel_null
@@ -26,7 +26,16 @@ def other_rows(fit: Fit) -> list[Row]:
         return []
     leg = fit.parity.legs[at]
     place = fit.place() | {"section": "other methods", "leg": leg.name, "role": leg.role}
-    return [place | row for row in _rows(fit, at, outcome)]
+    return [place | row for row in (*_instrument(fit, at), *_rows(fit, at, outcome))]
+
+
+def _instrument(fit: Fit, at: int) -> list[Row]:
+    """The slope by the instrument where it is the test or the second opinion."""
+    for errors in (fit.errors.test, fit.errors.second):
+        if errors.kinds[at] == "instrument":
+            value, error = float(errors.estimate.coefficients[0, at]), float(errors.std_error[0, at])
+            return [{"term": "IVX instrument", **judged(errors, at, value, error, 0.0, fit.confidence)}]
+    return []
 
 
 def _rows(fit: Fit, at: int, outcome: OneStep) -> Iterator[Row]:

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from carrylab.evidence.setting import AWAY, Fit, Row, judged
+from carrylab.evidence.setting import Fit, Row, doubt, judged
 from carrylab.markets.parity import Leg
 from carrylab.regression.covariance import Errors
 from carrylab.regression.law import critical
@@ -19,12 +19,14 @@ NO_NULL = "no null of its own; the joint null is that all other weighted slopes 
 
 
 def share_rows(fit: Fit, *, drawn: bool = False) -> list[Row]:
-    """Every row of section `shares` for one fit; `drawn`: the return leg's second opinion comes from draws instead."""
+    """Every row of section `shares` for one fit; `drawn`: draws under the null take the place they were given."""
+    given = fit.errors.draws if drawn else "beside"
     rows = list(_coefficients(fit, fit.headline, "headline"))
-    second = _second_opinion(fit)
     if fit.has_identity:
-        rows += _quantities(fit)
-    rows += [row for row in second if not (drawn and row["role"] == "return")]
+        rows += [row for row in _quantities(fit) if not (given == "headline" and row["term"] == "nothing paid")]
+    # Where draws come first, what would have been the test without them stands beside them.
+    second = fit.errors.test if given == "headline" else fit.errors.second
+    rows += [row for row in _second_opinion(fit, second) if not (given == "second opinion" and row["role"] == "return")]
     place = fit.place() | {"section": "shares"}
     return [place | row for row in rows]
 
@@ -40,9 +42,7 @@ def _coefficients(fit: Fit, errors: Errors, rank: str) -> Iterator[Row]:
     for at in range(len(fit.parity.legs)):
         for k, term in enumerate(fit.estimate.terms):
             row = _coefficient(fit, errors, (k, at), rank)
-            if term == "signal":
-                row |= _of_signal(fit, errors, at)
-            yield row
+            yield row | _of_signal(fit, errors, at) if term == "signal" else row
 
 
 def _coefficient(fit: Fit, errors: Errors, where: tuple[int, int], rank: str) -> Row:
@@ -58,6 +58,7 @@ def _coefficient(fit: Fit, errors: Errors, where: tuple[int, int], rank: str) ->
         **judged(errors, at, value, error, null, fit.confidence),
         "lags": errors.lags[at],
         "method": fit.method(errors, at),
+        "note": doubt(fit, errors, at),
     }
 
 
@@ -73,24 +74,32 @@ def _of_signal(fit: Fit, errors: Errors, at: int) -> Row:
         "weight": leg.weight,
         "share": None if leg.weight is None else leg.weight * value,
         "r2": float(fit.estimate.r2[at]),
-        "note": NO_NULL if leg.null is None and fit.has_identity else "",
+        "note": _joined(doubt(fit, errors, at), NO_NULL if leg.null is None and fit.has_identity else ""),
     }
 
 
-def _second_opinion(fit: Fit) -> list[Row]:
-    """The signal's rows again by other errors, and the test that nothing is paid, where the headline imposes a null."""
-    if fit.second is fit.headline:
-        return []
-    rows = []
+def _joined(*notes: str) -> str:
+    return "; ".join(note for note in notes if note)
+
+
+def _second_opinion(fit: Fit, errors: Errors) -> list[Row]:
+    """The signal's rows again by other errors, and the test that nothing is paid, where they are another kind."""
+    rows: list[Row] = []
+    if errors is fit.headline and fit.errors.test is fit.headline:
+        return rows
     for at, leg in enumerate(fit.parity.legs):
-        if fit.headline.kinds[at] not in AWAY:
-            continue
-        row = _coefficient(fit, fit.second, (0, at), "second opinion")
-        rows.append(row | _of_signal(fit, fit.second, at))
+        row = _coefficient(fit, errors, (0, at), "second opinion") | _of_signal(fit, errors, at)
+        rows.append(row)
         if leg.role == "return" and leg.weight is not None and fit.has_identity:
-            premium, error = leg.weight * row["estimate"], abs(leg.weight) * row["std_error"]
-            rows.append(row | {"term": "nothing paid", **judged(fit.second, at, premium, error, 0.0, fit.confidence)})
+            rows.append(row | {"term": "nothing paid", **_nothing_paid(fit, errors, at)})
     return rows
+
+
+def _nothing_paid(fit: Fit, errors: Errors, at: int) -> Row:
+    """The return leg's share by some errors and its test against zero."""
+    weight = fit.weights[at]
+    value, error = weight * errors.estimate.coefficients[0, at], abs(weight) * errors.std_error[0, at]
+    return judged(errors, at, float(value), float(error), 0.0, fit.confidence)
 
 
 def _quantities(fit: Fit) -> Iterator[Row]:
@@ -105,10 +114,16 @@ def _quantities(fit: Fit) -> Iterator[Row]:
     yield _resolved(fit, found)
     at = fit.leg_of("return")
     if at is not None:
-        nothing = _coefficient(fit, fit.headline, (0, at), "headline")
-        yield nothing | {"term": "nothing paid", **_scaled(found.premium, fit.headline, at, fit.confidence)}
+        nothing = _coefficient(fit, fit.errors.test, (0, at), "headline")
+        why = f"; chosen because {fit.errors.why}" if fit.errors.why else ""
+        yield nothing | {
+            "term": "nothing paid",
+            **_nothing_paid(fit, fit.errors.test, at),
+            "method": nothing["method"] + why,
+        }
     if fit.leg_of("fundamental") is not None:
-        yield _combination(fit, found.expectation) | {"term": "all paid", "note": "null: nothing comes true"}
+        all_paid = _combination(fit, found.expectation)
+        yield all_paid | {"term": "all paid", "note": _joined(all_paid["note"], "null: nothing comes true")}
 
 
 def _scaled(premium: Quantity, errors: Errors, at: int, confidence: float) -> Row:
@@ -131,6 +146,7 @@ def _combination(fit: Fit, quantity: Quantity) -> Row:
         **judged(fit.away, at, quantity.value, math.sqrt(max(variance, 0.0)), 0.0, fit.confidence),
         "lags": fit.away.lags[at],
         "method": fit.method(fit.away, at),
+        "note": doubt(fit, fit.away, at),
     }
 
 

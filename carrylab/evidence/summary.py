@@ -7,8 +7,9 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from carrylab.evidence.cautions import cautions
 from carrylab.evidence.setting import Fit, Row, tested
-from carrylab.regression.bias import LARGE_BIAS, Bias, effective_entities, predicted_bias
+from carrylab.regression.bias import Bias, effective_entities
 from carrylab.regression.law import critical
 from carrylab.regression.longrun import longrun
 from carrylab.regression.ratio import ratio_interval
@@ -22,11 +23,9 @@ def summary_rows(fit: Fit, said: Sequence[str] = ()) -> list[Row]:
     place = fit.place()
     rows = [*_levels(fit), *_dispersion(fit)]
     at = fit.leg_of("return")
-    warnings = [*said, *fit.headline.warnings]
-    if at is not None:
-        bias = predicted_bias(fit.sample, fit.estimate, at, float(fit.headline.std_error[0, at]))
-        rows += _worth(fit, at, bias)
-        warnings += _warnings(bias)
+    warnings = list(dict.fromkeys([*said, *fit.headline.warnings, *cautions(fit)]))
+    if at is not None and fit.errors.bias is not None:
+        rows += _worth(fit, at, fit.errors.bias)
     return [place | {"section": "summary"} | row for row in rows] + [
         place | {"section": "warning", "term": f"warning {number}", "note": text}
         for number, text in enumerate(warnings, 1)
@@ -98,15 +97,3 @@ def _worth(fit: Fit, at: int, bias: Bias) -> list[Row]:
         {"term": "bias ratio", "estimate": bias.ratio, "note": note},
         {"term": "predicted size", "estimate": bias.size, "note": "of a nominal two-sided 5% test"},
     ]
-
-
-def _warnings(bias: Bias) -> list[str]:
-    found = []
-    if abs(bias.ratio) >= LARGE_BIAS:
-        found.append(
-            f"the signal is persistent and its shocks move with returns: bias is {bias.ratio:+.1f} standard errors, so "
-            f"a nominal 5% test here rejects about {bias.size:.0%} of true nulls"
-        )
-    if bias.capped:
-        found.append("the signal's persistence sits at its cap of .999: close to a random walk")
-    return found

@@ -15,6 +15,7 @@ from carrylab.report.table import (
     Line,
     Table,
     count_cell,
+    doubts,
     error_cell,
     interval_cell,
     number_cell,
@@ -63,7 +64,7 @@ def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:
         title=title,
         head=tuple(head),
         lines=tuple(Line(line.label, line.cells[shown]) for line in lines),
-        notes=(*_detail_notes(headline), *_resolved_note(rows), *_joint_notes(joint)),
+        notes=(*_detail_notes(headline), *doubts(headline["note"]), *_resolved_note(rows), *_joint_notes(joint)),
         corner="slopes",
         unit=3 if own_p else 2,
     )
@@ -85,7 +86,9 @@ def _group_lines(
     p = {record["term"]: record["p_value"] for record in records}
     own_p = "nothing paid" not in p
     first = records[0]
-    tests = () if own_p else tuple(p_cell(p.get(term, math.nan)) for term in ("nothing paid", "all paid"))
+    note = {record["term"]: record["note"] for record in records}
+    paid = ("nothing paid", "all paid")
+    tests = () if own_p else tuple(p_cell(p.get(term, math.nan), note.get(term, "")) for term in paid)
     end = (*tests, count_cell(first["n_obs"]), word_cell(first["first"]), word_cell(first["last"]))
     blank = (Cell(),) * len(end)
     for term in [term for leg, term in at if leg == legs[0] and term not in ("const", "nothing paid")]:
@@ -97,7 +100,7 @@ def _group_lines(
             shown = digits.get((leg, str(term)), 2)
             upper += [number_cell(record["estimate"], shown), number_cell(record["r2"], 3) if signal else Cell()]
             lower += [error_cell(record["std_error"], shown), Cell()]
-            upper += [p_cell(record["p_value"])] if own_p else []
+            upper += [p_cell(record["p_value"], record["note"])] if own_p else []
             lower += [Cell()] if own_p else []
         yield Line(group if signal else f"  {term}", (*upper, *(end if signal else blank)))
         yield Line("", (*lower, *blank))

@@ -14,6 +14,7 @@ from carrylab.report.table import (
     Line,
     Table,
     count_cell,
+    doubts,
     error_cell,
     interval_cell,
     number_cell,
@@ -28,6 +29,8 @@ ROLE_WORDS = {
     "carried over": "still in the price",
     "approximation": "approximation error",
 }
+SECTIONS = ("shares", "summary", "warning", "draws", "other methods")
+CHOSEN = "; chosen because"
 STANDING = (
     "Slopes speak of variation in the spread: entity effects absorb standing premia, which the levels show instead."
 )
@@ -66,7 +69,8 @@ class Column:
 def columns_of(findings: pd.DataFrame, parity: str | None = None) -> list[Column]:
     """One column a market: the named parity, or each market's first, at the horizon most markets share."""
     pooled = findings[
-        (findings["group"] == "pooled") & findings["section"].isin(["shares", "summary", "warning", "draws"])
+        (findings["group"] == "pooled")
+        & findings["section"].isin(["shares", "summary", "warning", "draws", "other methods"])
     ]
     shares = pooled[pooled["section"] == "shares"]
     first = shares.drop_duplicates("market").set_index("market")["parity"]
@@ -136,6 +140,7 @@ def _shares(columns: list[Column]) -> list[Line]:
     lines = [Line("Share of the spread", heading=True)]
     for role, words in ROLE_WORDS.items():
         lines += _share_lines(columns, role, words)
+        lines += _other_slopes(columns) if role == "return" else []
     lines.append(_line("sum", columns, lambda c: number_cell(c.number("sum of shares"), 3)))
     lines.append(_line("resolved premium share", columns, lambda c: number_cell(c.number("resolved premium share"))))
     lines.append(_line("", columns, _resolved_error))
@@ -148,6 +153,24 @@ def _share_lines(columns: list[Column], role: str, words: str) -> list[Line]:
         Line(words, tuple(number_cell(share, _digits(error)) for share, error in found)),
         Line("", tuple(error_cell(error, _digits(error)) for _, error in found)),
         _line("  R2", columns, lambda c: number_cell(_r2(c, role), 3)),
+    ]
+
+
+def _other_slopes(columns: list[Column]) -> list[Line]:
+    """The share paid by the instrument, and with what draws say of its bias taken out; nothing where there is none."""
+
+    def instrument(field: str) -> Callable[[Column], float]:
+        return lambda c: c.number("IVX instrument", field, section="other methods")
+
+    value, error = instrument("estimate"), instrument("std_error")
+    return [
+        _line("  by the IVX instrument", columns, lambda c: number_cell(value(c))),
+        _line("", columns, lambda c: error_cell(error(c))),
+        _line(
+            "  least squares, bias out",
+            columns,
+            lambda c: number_cell(c.number("bias-corrected slope", section="draws")),
+        ),
     ]
 
 
@@ -176,7 +199,7 @@ def _resolved_error(column: Column) -> Cell:
     row = column.find("resolved premium share")
     if not len(row):
         return Cell()
-    if row["note"].iloc[0]:
+    if row["note"].iloc[0].startswith("interval"):
         return interval_cell(float(row["lower"].iloc[0]), float(row["upper"].iloc[0]))
     return error_cell(float(row["std_error"].iloc[0]))
 
@@ -184,19 +207,31 @@ def _resolved_error(column: Column) -> Cell:
 def _tests(columns: list[Column]) -> list[Line]:
     return [
         Line("p-value of the hypothesis", heading=True),
-        _line("nothing is paid", columns, lambda c: p_cell(c.number("nothing paid", "p_value"))),
-        _line(
-            "  second opinion", columns, lambda c: p_cell(c.number("nothing paid", "p_value", rank="second opinion"))
-        ),
+        _line("nothing is paid", columns, lambda c: _p_of(c.find("nothing paid"))),
+        _line("  second opinion", columns, lambda c: _p_of(c.find("nothing paid", rank="second opinion"))),
+        _line("  by draws", columns, _beside),
         _line("  at 5%, a premium is", columns, _firm),
-        _line("all is paid", columns, lambda c: p_cell(c.number("all paid", "p_value"))),
+        _line("all is paid", columns, lambda c: _p_of(c.find("all paid"))),
         _line(
-            "true size of a 5% test, %",
+            "size of 1B from bias, %",
             columns,
             lambda c: percent_cell(c.number("predicted size", section="summary"), 0),
         ),
         *_by_chance(columns),
     ]
+
+
+def _p_of(found: pd.DataFrame) -> Cell:
+    """The p-value of one finding, marked where it is in doubt."""
+    return p_cell(float(found["p_value"].iloc[0]), str(found["note"].iloc[0])) if len(found) else p_cell(math.nan)
+
+
+def _beside(column: Column) -> Cell:
+    """The p-value of draws under the null where they are neither the headline nor the second opinion."""
+    found, ranked = column.find("nothing paid", section="draws"), ("headline", "second opinion")
+    drawn = [str(method) for method in found["method"]]
+    shown = [str(text) for rank in ranked for text in column.find("nothing paid", rank=rank)["method"]]
+    return Cell() if any(words in text for words in drawn for text in shown) or found.empty else _p_of(found)
 
 
 def _firm(column: Column) -> Cell:
@@ -210,13 +245,8 @@ def _firm(column: Column) -> Cell:
 
 
 def _by_chance(columns: list[Column]) -> list[Line]:
-    """What draws under the null say of slope and R2; nothing where there were none."""
+    """What chance alone gives in draws under the null; nothing where there were none."""
     return [
-        _line(
-            "share paid, bias taken out",
-            columns,
-            lambda c: number_cell(c.number("bias-corrected slope", section="draws")),
-        ),
         _line("R2 by chance, 95%", columns, lambda c: number_cell(c.number("R2 by chance", section="draws"), 3)),
     ]
 
@@ -309,12 +339,11 @@ def _notes(columns: list[Column]) -> tuple[str, ...]:
     for column in columns:
         said.setdefault(_method(column), []).append(column.market)
     methods = [f"{', '.join(markets)}: {method}." for method, markets in said.items()]
-    seconds: dict[str, list[str]] = {}
-    for column in columns:
-        words = _second_words(column)
-        if words:
-            seconds.setdefault(words, []).append(column.market)
-    methods += [f"Second opinion, {', '.join(markets)}: {method}." for method, markets in seconds.items()]
+    for what, words_of in (("Second opinion", _second_words), ("By draws", _beside_words)):
+        others: dict[str, list[str]] = {}
+        for column in columns:
+            others.setdefault(words_of(column), []).append(column.market)
+        methods += [f"{what}, {', '.join(markets)}: {words}." for words, markets in others.items() if words]
     warnings = [
         f"{column.market}: {text}."
         for column in columns
@@ -328,8 +357,20 @@ def _notes(columns: list[Column]) -> tuple[str, ...]:
         "R2 is within the effects, or centred where there are none. Levels are in percent, a log ratio and columns of "
         "your own as they are.",
         *methods,
+        *_doubts(columns),
         *warnings,
     )
+
+
+def _doubts(columns: list[Column]) -> list[str]:
+    """What the question marks of the p-values mean, once for each reason."""
+    tests = [
+        text
+        for column in columns
+        for term, rank in (("nothing paid", "headline"), ("nothing paid", "second opinion"), ("all paid", "headline"))
+        for text in column.find(term, rank=rank)["note"]
+    ]
+    return doubts(tests)
 
 
 def _second_words(column: Column) -> str:
@@ -339,10 +380,16 @@ def _second_words(column: Column) -> str:
     return "" if words == column.text("all paid", "method") else words.partition("; ")[2]
 
 
+def _beside_words(column: Column) -> str:
+    """Method of the draws where they stand beside headline and second opinion."""
+    return column.text("nothing paid", "method", section="draws") if _beside(column).text else ""
+
+
 def _method(column: Column) -> str:
     premium = column.text("nothing paid", "method")
     away = column.text("all paid", "method")
     if not premium:
         rows = column.find("signal")
         return str(rows["method"].iloc[0]) if len(rows) else ""
-    return premium if premium == away or not away else f"{premium}; other rows: {away}"
+    same = premium.partition(CHOSEN)[0] == away
+    return premium if same or not away else f"{premium}; other rows: {away}"

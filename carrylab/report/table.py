@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from typing import Literal
 
+from carrylab.findings import DOUBTFUL
 from carrylab.report.numbers import count, fixed, in_brackets, in_parentheses, p_value, percent
 
 Kind = Literal["number", "interval", "words"]
@@ -70,9 +72,16 @@ def interval_cell(lower: float, upper: float, digits: int = 2) -> Cell:
     return Cell(in_brackets(lower, upper, digits), lower, "interval")
 
 
-def p_cell(value: float) -> Cell:
-    """A p-value."""
-    return Cell(p_value(value), value)
+def p_cell(value: float, note: str = "") -> Cell:
+    """A p-value, with a question mark where its note says that it is in doubt."""
+    mark = "?" if note.startswith(DOUBTFUL) and not math.isnan(value) else ""
+    return Cell(p_value(value) + mark, value)
+
+
+def doubts(notes: Iterable[str]) -> list[str]:
+    """What question marks beside p-values mean, one sentence for each reason among the notes of findings."""
+    reasons = (note.removeprefix(DOUBTFUL).partition(";")[0] for note in notes if note.startswith(DOUBTFUL))
+    return [f"p with a question mark: {reason}." for reason in dict.fromkeys(reasons)]
 
 
 def percent_cell(value: float, digits: int = 2) -> Cell:

@@ -136,7 +136,7 @@ def _rows(cells: list[list[str]]) -> list[list[str]]:
 
 def _tail(cell: Cell) -> str:
     """What stands from the decimal point on."""
-    found = re.search(r"(\.\d+)?\)?$", cell.text) if cell.kind == "number" else None
+    found = re.search(r"(\.\d+)?[)?]?$", cell.text) if cell.kind == "number" else None
     return found[0] if found else ""
 
 

@@ -19,8 +19,13 @@ def others(folder: Path, study: str, files: dict[str, pd.DataFrame]) -> pd.DataF
 
 def test_panels_and_series_get_what_applies(tmp_path: Path) -> None:
     rows = others(tmp_path, worlds.CURRENCIES, worlds.currencies())
-    assert set(rows.loc[rows["group"] == "pooled", "term"]) == {"half-panel jackknife", "reverse regression"}
+    assert set(rows.loc[rows["group"] == "pooled", "term"]) == {
+        "IVX instrument",
+        "half-panel jackknife",
+        "reverse regression",
+    }
     assert set(rows.loc[rows["group"] == "BBB", "term"]) == {
+        "IVX instrument",
         "half-panel jackknife",
         "reverse regression",
         "IVX, one period ahead",

@@ -61,6 +61,7 @@ def test_the_level_of_the_signal_moves_no_slope(tmp_path: Path) -> None:
 def test_two_legs_have_one_error_and_one_test(tmp_path: Path) -> None:
     found, _ = one_entity(tmp_path)
     rows = found[(found["section"] == "shares") & (found["term"] == "signal")]
+    rows = rows[rows["rank"] == "headline"]
     paid, true = rows.to_dict("records")
     assert paid["std_error"] == pytest.approx(true["std_error"])
     assert paid["p_value"] == pytest.approx(true["p_value"])
