@@ -12,8 +12,7 @@ from dataclasses import dataclass
 import pandas as pd
 from tabulate import DataRow, TableFormat, tabulate
 
-from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
-from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
+from carrylab.report.sections import Part, parts_of
 from carrylab.report.table import Cell, Table
 
 BETWEEN = "   "
@@ -21,12 +20,6 @@ JOURNAL = TableFormat(None, None, None, None, DataRow("", BETWEEN, ""), DataRow(
 HEAD_WIDTH = 12
 # Words wrap at the first of these widths with which a table fits.
 WRAPS = (20, 18, 16, 14, 13, 12, 10)
-CAUTIONS = (
-    "Not investment advice. Everything here is in sample, and a premium in sample is no forecast.",
-    "Before costs, margin, tax and capital controls. Carry earns little by little and loses in crashes; a peg that "
-    "held says nothing about the day it breaks.",
-    "Horizons, markets and countries are not independent evidence. Local rules may ask for licensed advice.",
-)
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -40,29 +33,18 @@ class Block:
 
 def report_text(findings: pd.DataFrame, *, title: str, width: int = 100, audit: Iterable[str] = ()) -> str:
     """The whole report, at most `width` columns wide where its words allow."""
-    parts = [title, "=" * min(len(title), width)]
-    main = side_by_side(findings, title="Is the spread paid out, or does it come true?")
-    parts += _tables([main, comparison_table(findings)], width)
-    if len(columns_of(findings, "carry")) > 1 and {column.parity for column in columns_of(findings)} != {"carry"}:
-        shared = side_by_side(findings, title="Carry, the same signal in every market", parity="carry")
-        parts += _tables([shared, comparison_table(findings, "carry")], width)
-    parts += _tables(detail_tables(findings), width)
-    parts += _tables((latest_table(findings, c.market, c.parity, c.horizon) for c in columns_of(findings)), width)
-    parts += _section("Load checks", check_lines(findings), width)
-    parts += _section("Identities", identity_lines(findings), width)
-    parts += _tables([ledger_table(findings)], width)
-    parts += _section("Audit", audit, width)
-    parts += _section("Cautions", CAUTIONS, width)
-    return "\n".join(parts) + "\n"
+    said = [title, "=" * min(len(title), width)]
+    for part in parts_of(findings, audit):
+        said += _part(part, width)
+    return "\n".join(said) + "\n"
 
 
-def _tables(tables: Iterable[Table | None], width: int) -> list[str]:
-    return [text for table in tables if table is not None for text in ("", table_text(table, width))]
-
-
-def _section(title: str, lines: Iterable[str], width: int) -> list[str]:
-    listed = [_wrapped(line, width, "  ") for line in lines]
-    return ["", title, *listed] if listed else []
+def _part(part: Part, width: int) -> list[str]:
+    """Tables bring titles of their own; sentences stand under the title of their section."""
+    said = ["", part.title] if any(isinstance(piece, str) for piece in part.pieces) else []
+    for piece in part.pieces:
+        said += [_wrapped(piece, width, "  ")] if isinstance(piece, str) else ["", table_text(piece, width)]
+    return said
 
 
 def _wrapped(text: str, width: int, indent: str) -> str:
