@@ -193,12 +193,21 @@ class Forecast:
 
 
 @dataclass(frozen=True, slots=True)
+class Rule:
+    """A series above or below a mark: zero, its mean, or its quantile (a number between 0 and 1)."""
+
+    series: str
+    side: Literal["above", "below"]
+    mark: Literal["zero", "mean"] | float
+
+
+@dataclass(frozen=True, slots=True)
 class State:
     """A labelled series by date from a file, or a `rule` over a series; `known` false where it is dated afterwards."""
 
     name: str
     source: Source | None = None
-    rule: str | None = None
+    rule: Rule | None = None
     known: bool = True
 
 

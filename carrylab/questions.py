@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import Any, TypeVar
 
-from carrylab.options import Breaks, Forecast, Period, Profile, Questions, State, Windows
-from carrylab.schema import Problems, Reader, number, period, read_table, switch, tenor, text, whole
+from carrylab.options import Breaks, Forecast, Period, Profile, Questions, Rule, State, Windows
+from carrylab.schema import NotAllowedError, Problems, Reader, number, period, read_table, switch, tenor, text, whole
 from carrylab.sources import STATE, state_source
 
 Record = TypeVar("Record")
@@ -26,6 +27,27 @@ WINDOWS: dict[str, Reader] = {"rolling": tenor, "expanding": tenor, "every": ten
 BREAKS: dict[str, Reader] = {"trim": number(0, 0.5)}
 FORECAST: dict[str, Reader] = {"first": tenor, "rolling": tenor, "risk_aversion": number(0, 1000)}
 PERIOD: dict[str, Reader] = {"name": text, "from": period, "until": period}
+
+
+ABOVE = re.compile(r"(?P<series>\S.*?) (?P<side>above|below) (?:(?P<zero>zero)|its (?P<what>median|mean))")
+IN_PART = re.compile(r"(?P<series>\S.*?) in its (?P<side>top|bottom) (?P<part>half|third|quarter|fifth|tenth)")
+PARTS_OF = {"half": 2, "third": 3, "quarter": 4, "fifth": 5, "tenth": 10}
+
+
+def rule(value: Any) -> Rule:
+    """A series against its own level, in words."""
+    words = text(value).strip()
+    above, part = ABOVE.fullmatch(words), IN_PART.fullmatch(words)
+    if above:
+        mark: Any = "zero" if above["zero"] else {"median": 0.5, "mean": "mean"}[above["what"]]
+        return Rule(above["series"], "above" if above["side"] == "above" else "below", mark)
+    if part:
+        share = 1.0 / PARTS_OF[part["part"]]
+        return Rule(part["series"], *(("above", 1.0 - share) if part["side"] == "top" else ("below", share)))
+    raise NotAllowedError(
+        'allowed are such as "signal above zero", "signal below its median", "growth above its mean", '
+        '"volatility in its top third"'
+    )
 
 
 def read_questions(top: Mapping[str, Any], path: Path, problems: Problems) -> Questions:
@@ -74,12 +96,13 @@ def _states(raw: Any, path: Path, problems: Problems) -> tuple[State, ...]:
     found = []
     for at, table in enumerate(_tables(raw, "[[state]]", problems), 1):
         place = f"[[state]] number {at}"
-        values = read_table(table, {**STATE, "name": text, "rule": text, "known": switch}, place, problems)
+        values = read_table(table, {**STATE, "name": text, "rule": rule, "known": switch}, place, problems)
         if "name" not in values:
             problems.add(place, "the key name is missing")
             continue
-        if ("file" in values) == ("rule" in values):
+        if ("file" in table) == ("rule" in table):
             problems.add(place, "give either file or rule; allowed is one of them")
+        if ("file" in values) == ("rule" in values):
             continue
         own = {key: values.pop(key) for key in ("name", "rule", "known") if key in values}
         source = state_source(values, own["name"], path) if values else None

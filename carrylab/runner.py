@@ -15,16 +15,18 @@ from carrylab.data.calendar import Tenor, parse_tenor
 from carrylab.data.checks import Check, check_market
 from carrylab.data.panel import curves
 from carrylab.data.read import MarketData, Table, read_market
+from carrylab.data.states import read_labels
 from carrylab.errors import DataError, StudyError
 from carrylab.evidence import asked
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
-from carrylab.evidence.case import Case
+from carrylab.evidence.case import Case, Labelled
 from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
 from carrylab.evidence.others import other_rows
+from carrylab.evidence.rules import require_found, rule_labels
 from carrylab.evidence.setting import Fit, Row, errors_of
 from carrylab.evidence.shares import share_rows
 from carrylab.evidence.summary import summary_rows
@@ -34,7 +36,7 @@ from carrylab.markets.columns import predictor
 from carrylab.markets.curves import YieldCurves
 from carrylab.markets.parity import Entity, Leg, Parity, identity
 from carrylab.markets.proof import identity_check
-from carrylab.options import Inference, Market, Questions, Study
+from carrylab.options import Inference, Market, Questions, State, Study
 from carrylab.regression.covariance import ErrorOptions
 from carrylab.regression.draws import FOR_PRINT
 from carrylab.regression.fit import fit
@@ -90,6 +92,7 @@ def run(study: Study, *, audit: bool = False, progress: Progress | None = None) 
     rows = [row for one, done in zip(built, fitted, strict=True) for row in (*_accounts(one), *done.rows)]
     cases = [case for done in fitted for case in done.cases]
     rows += _across([fit for case in cases for fit in case.fits])
+    require_found(study.questions.states, cases)
     rows += asked.study_rows(cases, study.questions)
     timings["estimate"] = time.perf_counter() - clock
     audited = _audited(built, fitted, say) if audit else None
@@ -211,7 +214,8 @@ def _one_step(leg: Leg, steps: int) -> OneStep | None:
 
 def estimate(built: Built, economies: Mapping[str, str], questions: Questions | None = None) -> Fitted:
     """Fit every parity of one market, pooled and by group, and write its rows."""
-    cases = tuple(_case(parity, built, economies) for parity in built.parities)
+    asking = questions or Questions()
+    cases = tuple(_case(parity, built, economies, asking) for parity in built.parities)
     families = [case.fits for case in cases]
     drawn = _drawn(built, families)
     rows = list(drawn.rows)
@@ -227,7 +231,7 @@ def estimate(built: Built, economies: Mapping[str, str], questions: Questions | 
         rows += regression_ledger_rows(family[0])
         rows += latest_rows(family[0], case.terms)
         rows += _other_rho(parity, built, economies)
-        rows += asked.case_rows(case, questions or Questions())
+        rows += asked.case_rows(case, asking)
     samples = tuple((one.sample.label, one.sample) for family in families for one in family)
     return Fitted(cases, samples, tuple(rows))
 
@@ -239,11 +243,24 @@ def draws_of(inference: Inference, families: Sequence[Sequence[Fit]]) -> int:
     return FOR_PRINT if any(family[0].errors.needs_draws for family in families) else 0
 
 
-def _case(parity: Parity, built: Built, economies: Mapping[str, str]) -> Case:
-    """One parity with its fits, pooled and by group."""
+def _case(parity: Parity, built: Built, economies: Mapping[str, str], asking: Questions | None = None) -> Case:
+    """One parity with its fits, pooled and by group, and the states that are asked about."""
     sample, terms = sample_of(parity, built.data)
     fits = tuple(_fits(parity, sample, built.market))
-    return Case(parity, fits, terms, error_options(built.market.inference), _rebuild(parity, built, economies))
+    found = (_labelled(state, fits[0], terms) for state in (asking.states if asking else ()))
+    states = tuple(state for state in found if state is not None)
+    rebuild = _rebuild(parity, built, economies)
+    return Case(parity, fits, terms, error_options(built.market.inference), rebuild, states)
+
+
+def _labelled(state: State, fit: Fit, terms: Floats) -> Labelled | None:
+    """A state on the parity's calendar, from its file or by its rule; None where its series is another market's."""
+    note = "" if state.known else "dated afterwards, not known at the time"
+    if state.rule is not None:
+        labels = rule_labels(state, state.rule, fit, terms)
+        return None if labels is None else Labelled(state.name, labels, note)
+    assert state.source is not None
+    return Labelled(state.name, read_labels(state.source, state.name, fit.parity.calendar), note)
 
 
 def _rebuild(parity: Parity, built: Built, economies: Mapping[str, str]) -> Callable[[Sequence[Tenor]], list[Case]]:

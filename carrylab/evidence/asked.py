@@ -7,10 +7,11 @@ from collections.abc import Callable, Sequence
 from carrylab.evidence.case import Case
 from carrylab.evidence.parts import part_rows
 from carrylab.evidence.setting import Row
+from carrylab.evidence.states import state_rows
 from carrylab.options import Questions
 
 # Each returns no rows where its question is not asked.
-OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (part_rows,)
+OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (part_rows, state_rows)
 OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = ()
 
 

@@ -5,6 +5,9 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
+import numpy as np
+import numpy.typing as npt
+
 from carrylab.data.calendar import Tenor
 from carrylab.evidence.setting import Fit, errors_of
 from carrylab.markets.parity import Parity
@@ -16,12 +19,21 @@ Rebuild = Callable[[Sequence[Tenor]], "list[Case]"]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
+class Labelled:
+    """A state on a parity's calendar: `labels` (T,), empty where it is not known, and a `note` on when it was."""
+
+    name: str
+    labels: npt.NDArray[np.object_]
+    note: str = ""
+
+
+@dataclass(frozen=True, eq=False, slots=True)
 class Case:
     """One parity of one market at one horizon.
 
     `fits`: the pooled fit first, then one a group. `terms` (T, N, K): signal and added predictors with their holes,
     as known at each origin. `errors` as the study chose them. `at_horizons` builds the same parity at other horizons
-    from the same data, each with its pooled fit alone.
+    from the same data, each with its pooled fit alone. `states` are those of the study, on the parity's calendar.
     """
 
     parity: Parity
@@ -29,6 +41,7 @@ class Case:
     terms: Floats
     errors: ErrorOptions
     at_horizons: Rebuild
+    states: tuple[Labelled, ...] = ()
 
     @property
     def pooled(self) -> Fit:

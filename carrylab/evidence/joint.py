@@ -66,9 +66,11 @@ def _row(fits: Sequence[Fit], term: str, series: Floats, values: Floats, test: t
 
 
 def _cosines(series: Floats, overlap: int, kind: str) -> int | None:
-    """At most half as many cosines as there are independent windows on dates that any group uses."""
-    if kind != "cosine":
-        return None
+    return fallback_cosines(series, overlap) if kind == "cosine" else None
+
+
+def fallback_cosines(series: Floats, overlap: int) -> int:
+    """At most half as many cosines as there are independent windows on dates that any of the series (T, m) uses."""
     n = int((series != 0).any(axis=1).sum())
     return max(2, min(cosine_count(n, overlap), n // (2 * (overlap + 1))))
 

@@ -10,9 +10,10 @@ import numpy as np
 
 from carrylab.errors import InferenceError, SampleError
 from carrylab.evidence.case import Case
+from carrylab.evidence.joint import fallback_cosines
 from carrylab.evidence.setting import Fit, Row, tested
 from carrylab.options import Questions
-from carrylab.regression.longrun import cosine_count, longrun
+from carrylab.regression.longrun import longrun
 from carrylab.regression.parts import PARTS, Parts, parts
 from carrylab.regression.sample import Floats, Sample, make_sample
 from carrylab.regression.wald import restrictions, wald
@@ -99,8 +100,7 @@ def _equal(series: Floats, slopes: Floats, overlap: int) -> Row:
     """The test that the three slopes of one leg are one, with at most half as many cosines as independent windows."""
     matrix = np.array([[1.0, -1.0, 0.0], [1.0, 0.0, -1.0]])
     names = [f"{PARTS[0]} = {other}" for other in PARTS[1:]]
-    n = int((series != 0).any(axis=1).sum())
-    cosines = max(2, min(cosine_count(n, overlap), n // (2 * (overlap + 1))))
+    cosines = fallback_cosines(series, overlap)
     try:
         found = wald(series, slopes, restrictions(names, matrix), kind="cosine", lags=overlap, cosines=cosines)
     except InferenceError as refused:

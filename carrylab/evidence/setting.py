@@ -160,8 +160,8 @@ def _facts(parity: Parity, sample: Sample, estimate: Estimate, one_period: bool,
 
 
 def windows_of(sample: Sample, estimate: Estimate) -> float:
-    """How many windows that do not overlap fit into the span of used dates, K = T/h."""
-    return (estimate.last - estimate.first + 1) / (sample.overlap + 1)
+    """How many windows that do not overlap the used dates would fill, K = T/h."""
+    return estimate.n_dates / (sample.overlap + 1)
 
 
 def _chosen(judged: Judged, choice: Choice, other: Callable[[str], Errors]) -> Judged:

@@ -8,7 +8,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from carrylab.evidence.cautions import cautions
-from carrylab.evidence.setting import Fit, Row, tested
+from carrylab.evidence.setting import Fit, Row, tested, windows_of
 from carrylab.regression.bias import Bias, effective_entities
 from carrylab.regression.law import critical
 from carrylab.regression.longrun import longrun
@@ -80,11 +80,10 @@ def _dispersion(fit: Fit) -> list[Row]:
     k = len(fit.sample.terms)
     centre = fit.estimate.absorbed.entity[:, 0] + fit.estimate.absorbed.date[:, :1]
     within = ((fit.sample.x[:, :, 0] - centre) * mask).ravel()
-    span = fit.estimate.last - fit.estimate.first + 1
     return [
         {"term": "signal sd", "estimate": float(signal.std(ddof=1))},
         {"term": "signal sd within", "estimate": math.sqrt(float(within @ within) / max(n - k, 1))},
-        {"term": "independent windows", "estimate": span / (fit.sample.overlap + 1)},
+        {"term": "independent windows", "estimate": windows_of(fit.sample, fit.estimate)},
     ]
 
 

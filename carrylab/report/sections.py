@@ -10,6 +10,7 @@ import pandas as pd
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
 from carrylab.report.slope_parts import part_tables
+from carrylab.report.states import state_tables
 from carrylab.report.table import Table
 
 # A table, or a sentence or two.
@@ -66,7 +67,10 @@ def _there(table: Table | None) -> Iterator[Table]:
 
 
 # Answers to the further questions of a study, each in a module of its own beside this one.
-EVIDENCE: tuple[Section, ...] = (Section("Parts of the slope", part_tables),)
+EVIDENCE: tuple[Section, ...] = (
+    Section("Parts of the slope", part_tables),
+    Section("States", state_tables),
+)
 SECTIONS: tuple[Section, ...] = (
     Section("Side by side", _answer),
     Section("Carry, the same signal in every market", _carry),
