@@ -202,10 +202,10 @@ def _latest_line(entity: str, terms: dict[str, Record], scales: tuple[int, int])
     premium, (wide, scale) = terms["fitted premium"], scales
     cells = (
         word_cell(str(premium["last"])),
-        number_cell(terms["signal"]["estimate"] * wide),
+        number_cell(terms["signal"]["estimate"], scale=wide),
         percent_cell(terms["percentile"]["estimate"], 0),
-        number_cell(premium["estimate"] * scale),
-        interval_cell(premium["lower"] * scale, premium["upper"] * scale),
+        number_cell(premium["estimate"], scale=scale),
+        interval_cell(premium["lower"], premium["upper"], scale=scale),
     )
     return Line(entity, cells)
 

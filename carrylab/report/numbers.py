@@ -32,11 +32,6 @@ def digits_of(error: float, least: int = 2) -> int:
     return math.ceil(-math.log10(error)) + 1
 
 
-def percent(value: float, digits: int = 2) -> str:
-    """A decimal as a percentage without its sign."""
-    return fixed(value * 100, digits)
-
-
 def in_parentheses(value: float, digits: int = 2) -> str:
     """A standard error under its estimate; nothing where there is none."""
     return "" if math.isnan(value) else f"({fixed(value, digits)})"

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import pandas as pd
 
+from carrylab.report.answer import answer_lines
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
 from carrylab.report.slope_parts import part_tables
@@ -39,7 +40,7 @@ class Part:
     pieces: tuple[Piece, ...]
 
 
-def _answer(findings: pd.DataFrame) -> Iterator[Table]:
+def _own_spreads(findings: pd.DataFrame) -> Iterator[Table]:
     yield from _there(side_by_side(findings, title="Is the spread paid out, or does it come true?"))
     yield from _there(comparison_table(findings))
 
@@ -72,7 +73,8 @@ EVIDENCE: tuple[Section, ...] = (
     Section("States", state_tables),
 )
 SECTIONS: tuple[Section, ...] = (
-    Section("Side by side", _answer),
+    Section("The answer", answer_lines),
+    Section("Side by side", _own_spreads),
     Section("Carry, the same signal in every market", _carry),
     Section("Market by market", detail_tables),
     Section("Newest signals", _latest),

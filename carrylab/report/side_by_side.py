@@ -148,7 +148,7 @@ def _shares(columns: list[Column]) -> list[Line]:
 
 
 def _share_lines(columns: list[Column], role: str, words: str) -> list[Line]:
-    found = [_share(column, role) for column in columns]
+    found = [share_of(column, role) for column in columns]
     return [
         Line(words, tuple(number_cell(share, _digits(error)) for share, error in found)),
         Line("", tuple(error_cell(error, _digits(error)) for _, error in found)),
@@ -174,7 +174,7 @@ def _other_slopes(columns: list[Column]) -> list[Line]:
     ]
 
 
-def _share(column: Column, role: str) -> tuple[float, float]:
+def share_of(column: Column, role: str) -> tuple[float, float]:
     """Share of one role and its error; several fundamental legs are taken together."""
     rows = column.find("signal", role=role)
     if len(rows) == 1 and not math.isnan(rows["weight"].iloc[0]):
@@ -207,11 +207,11 @@ def _resolved_error(column: Column) -> Cell:
 def _tests(columns: list[Column]) -> list[Line]:
     return [
         Line("p-value of the hypothesis", heading=True),
-        _line("nothing is paid", columns, lambda c: _p_of(c.find("nothing paid"))),
-        _line("  second opinion", columns, lambda c: _p_of(c.find("nothing paid", rank="second opinion"))),
+        _line("nothing is paid", columns, lambda c: p_of(c.find("nothing paid"))),
+        _line("  second opinion", columns, lambda c: p_of(c.find("nothing paid", rank="second opinion"))),
         _line("  by draws", columns, _beside),
-        _line("  at 5%, a premium is", columns, _firm),
-        _line("all is paid", columns, lambda c: _p_of(c.find("all paid"))),
+        _line("  at 5%, a premium is", columns, verdict_of),
+        _line("all is paid", columns, lambda c: p_of(c.find("all paid"))),
         _line(
             "size of 1B from bias, %",
             columns,
@@ -221,7 +221,7 @@ def _tests(columns: list[Column]) -> list[Line]:
     ]
 
 
-def _p_of(found: pd.DataFrame) -> Cell:
+def p_of(found: pd.DataFrame) -> Cell:
     """The p-value of one finding, marked where it is in doubt."""
     return p_cell(float(found["p_value"].iloc[0]), str(found["note"].iloc[0])) if len(found) else p_cell(math.nan)
 
@@ -231,17 +231,18 @@ def _beside(column: Column) -> Cell:
     found, ranked = column.find("nothing paid", section="draws"), ("headline", "second opinion")
     drawn = [str(method) for method in found["method"]]
     shown = [str(text) for rank in ranked for text in column.find("nothing paid", rank=rank)["method"]]
-    return Cell() if any(words in text for words in drawn for text in shown) or found.empty else _p_of(found)
+    return Cell() if any(words in text for words in drawn for text in shown) or found.empty else p_of(found)
 
 
-def _firm(column: Column) -> Cell:
-    """What the headline and the second opinion say together: firm only where both agree."""
-    found = [column.number("nothing paid", "p_value", rank=rank) for rank in ("headline", "second opinion")]
-    known = [p for p in found if not math.isnan(p)]
+def verdict_of(column: Column) -> Cell:
+    """What the headline and the second opinion say together: firm only where both agree and neither is in doubt."""
+    found = [p_of(column.find("nothing paid", rank=rank)) for rank in ("headline", "second opinion")]
+    known = [cell for cell in found if not math.isnan(cell.value)]
     if len(known) < 2:
         return Cell()
-    below = sum(p < 0.05 for p in known)
-    return word_cell(("not seen", "in doubt", "firm")[below])
+    below = sum(cell.value < 0.05 for cell in known)
+    doubtful = below == 2 and any(cell.text.endswith("?") for cell in known)
+    return word_cell(("not seen", "in doubt", "firm")[below - doubtful])
 
 
 def _by_chance(columns: list[Column]) -> list[Line]:
@@ -268,7 +269,7 @@ def _levels(columns: list[Column]) -> list[Line]:
         Line("Levels over the horizon", heading=True),
         _line("mean signal", columns, lambda c: of_signal(c, "mean signal")),
         _line("mean excess return", columns, lambda c: _level(c, mean(c))),
-        _line("", columns, lambda c: error_cell(error(c) * (1 if c.parity == "columns" else 100))),
+        _line("", columns, lambda c: error_cell(error(c), scale=1 if c.parity == "columns" else 100)),
         _line("constant", columns, lambda c: _level(c, _constant(c))),
         _line("sd of the signal, effects out", columns, lambda c: of_signal(c, "signal sd within")),
         _line("mean return / mean signal", columns, lambda c: number_cell(math.nan if _is_ratio(c) else level(c))),

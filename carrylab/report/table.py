@@ -8,18 +8,22 @@ from dataclasses import dataclass, replace
 from typing import Literal
 
 from carrylab.findings import DOUBTFUL
-from carrylab.report.numbers import count, fixed, in_brackets, in_parentheses, p_value, percent
+from carrylab.report.numbers import count, fixed, in_brackets, in_parentheses, p_value
 
 Kind = Literal["number", "interval", "words"]
 
 
 @dataclass(frozen=True, slots=True)
 class Cell:
-    """One cell: the text to print and the raw number where it has one. Numbers stand point over point, words wrap."""
+    """One cell: the text to print and the raw number where it has one. Numbers stand point over point, words wrap.
+
+    `value` is the number as it stands in the findings; `upper` is the other end of an interval that begins there.
+    """
 
     text: str = ""
     value: float = math.nan
     kind: Kind = "number"
+    upper: float = math.nan
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,19 +61,19 @@ class Table:
         return replace(self, head=self.head[chosen], lines=lines)
 
 
-def number_cell(value: float, digits: int = 2) -> Cell:
-    """An estimate."""
-    return Cell(fixed(value, digits), value)
+def number_cell(value: float, digits: int = 2, *, scale: float = 1) -> Cell:
+    """An estimate, printed `scale` times as large: 100 for a decimal in percent."""
+    return Cell(fixed(value * scale, digits), value)
 
 
-def error_cell(value: float, digits: int = 2) -> Cell:
-    """A standard error in parentheses."""
-    return Cell(in_parentheses(value, digits), value)
+def error_cell(value: float, digits: int = 2, *, scale: float = 1) -> Cell:
+    """A standard error in parentheses, printed `scale` times as large."""
+    return Cell(in_parentheses(value * scale, digits), value)
 
 
-def interval_cell(lower: float, upper: float, digits: int = 2) -> Cell:
-    """An interval in brackets; its raw value is the lower end."""
-    return Cell(in_brackets(lower, upper, digits), lower, "interval")
+def interval_cell(lower: float, upper: float, digits: int = 2, *, scale: float = 1) -> Cell:
+    """An interval in brackets, printed `scale` times as large."""
+    return Cell(in_brackets(lower * scale, upper * scale, digits), lower, "interval", upper)
 
 
 def p_cell(value: float, note: str = "") -> Cell:
@@ -86,7 +90,7 @@ def doubts(notes: Iterable[str]) -> list[str]:
 
 def percent_cell(value: float, digits: int = 2) -> Cell:
     """A decimal shown in percent."""
-    return Cell(percent(value, digits), value)
+    return number_cell(value, digits, scale=100)
 
 
 def count_cell(value: float) -> Cell:

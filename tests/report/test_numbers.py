@@ -22,8 +22,7 @@ def test_fixed(value: float, digits: int, text: str) -> None:
     assert numbers.fixed(value, digits) == text
 
 
-def test_percent_errors_intervals_and_counts() -> None:
-    assert numbers.percent(0.01234) == "1.23"
+def test_errors_intervals_and_counts() -> None:
     assert numbers.in_parentheses(0.2) == "(0.20)"
     assert numbers.in_parentheses(math.nan) == ""
     assert numbers.in_brackets(-1.0, 2.0) == "[-1.00, 2.00]"
