@@ -110,6 +110,20 @@ class PanelColumns:
 
 
 @dataclass(frozen=True, slots=True)
+class Survey:
+    """A survey expectation of one fundamental leg over one horizon.
+
+    `growth`: the file gives a simple growth over the horizon, R, which becomes ln(1 + R); else a value in the unit of
+    the leg. The source's unit makes either a decimal.
+    """
+
+    leg: str
+    horizon: Tenor
+    source: Source
+    growth: bool = False
+
+
+@dataclass(frozen=True, slots=True)
 class Inference:
     """How standard errors are made. `lags` and `factor` of None mean the stated rule of the error kind.
 
@@ -139,6 +153,7 @@ class Market:
     inference: Inference
     sources: Mapping[str, tuple[Source, ...]]
     controls: tuple[Source, ...] = ()
+    surveys: tuple[Survey, ...] = ()
     panel: PanelColumns | None = None
     first: str | None = None
     last: str | None = None

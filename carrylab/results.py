@@ -55,6 +55,8 @@ class Results:
         """Write the run folder: report.txt, findings.csv, panel.csv, run.json; findings.parquet with pyarrow."""
         files = [s.path for market in self.study.markets for found in market.sources.values() for s in found]
         files += [source.path for market in self.study.markets for source in market.controls]
+        files += [survey.source.path for market in self.study.markets for survey in market.surveys]
+        files += [state.source.path for state in self.study.questions.states if state.source is not None]
         account = {
             "study": self.study.text,
             "data_sha256": record.hashes(files),

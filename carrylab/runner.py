@@ -16,11 +16,12 @@ from carrylab.data.checks import Check, check_market
 from carrylab.data.panel import curves
 from carrylab.data.read import MarketData, Table, read_market
 from carrylab.data.states import read_labels
+from carrylab.data.units import to_decimal
 from carrylab.errors import DataError, StudyError
 from carrylab.evidence import asked
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
-from carrylab.evidence.case import Case, Labelled
+from carrylab.evidence.case import Case, Expected, Labelled
 from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
@@ -114,6 +115,7 @@ def build(market: Market, economies: Mapping[str, str]) -> Built:
         return Built(market, data, (), tuple(checks))
     whole = MARKETS[market.kind](data, economies)
     _require_known(market, [entity for parity in whole for entity in parity.entities])
+    _require_surveys(market, whole)
     parities = tuple(_kept(parity, market) for parity in whole)
     main = next(iter(market.sources.values()))[0].file
     proofs = [identity_check(parity, main) for parity in parities]
@@ -135,6 +137,18 @@ def _require_known(market: Market, entities: Iterable[Entity]) -> None:
             raise StudyError(
                 f"market {market.name!r}, key leave_out: {code!r} is not in this market{nearest(code, known)}; allowed "
                 f"are {', '.join(sorted(known))}"
+            )
+
+
+def _require_surveys(market: Market, parities: Iterable[Parity]) -> None:
+    """Every survey must be of a leg of one of the market's parities, over that parity's horizon."""
+    known = [(leg.name, str(parity.horizon)) for parity in parities for leg in parity.legs]
+    for survey in market.surveys:
+        if (survey.leg, str(survey.horizon)) not in known:
+            allowed = ", ".join(dict.fromkeys(f"{leg} over {horizon}" for leg, horizon in known))
+            raise StudyError(
+                f"market {market.name!r}, key surveys: no parity has the leg {survey.leg!r} over {survey.horizon}"
+                f"{nearest(survey.leg, dict.fromkeys(leg for leg, _ in known))}; allowed are {allowed}"
             )
 
 
@@ -250,7 +264,17 @@ def _case(parity: Parity, built: Built, economies: Mapping[str, str], asking: Qu
     found = (_labelled(state, fits[0], terms) for state in (asking.states if asking else ()))
     states = tuple(state for state in found if state is not None)
     rebuild = _rebuild(parity, built, economies)
-    return Case(parity, fits, terms, error_options(built.market.inference), rebuild, states)
+    surveys = tuple(_surveys(parity, built.data))
+    return Case(parity, fits, terms, error_options(built.market.inference), rebuild, states, surveys)
+
+
+def _surveys(parity: Parity, data: MarketData) -> Iterator[Expected]:
+    """The survey expectations of this parity's legs over its horizon."""
+    names = [leg.name for leg in parity.legs]
+    for survey, table in zip(data.market.surveys, data.surveys, strict=True):
+        if survey.horizon == parity.horizon and survey.leg in names:
+            values = to_decimal(_control(table, parity), survey.source.unit)
+            yield Expected(names.index(survey.leg), np.log1p(values) if survey.growth else values)
 
 
 def _labelled(state: State, fit: Fit, terms: Floats) -> Labelled | None:

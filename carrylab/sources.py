@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import Any, get_args
 
 from carrylab import options
-from carrylab.options import LegColumn, PanelColumns, Source
+from carrylab.options import LegColumn, PanelColumns, Source, Survey
 from carrylab.schema import (
     Problems,
     Reader,
@@ -21,6 +21,7 @@ from carrylab.schema import (
     pattern,
     read_table,
     several,
+    switch,
     tenor,
     text,
     texts,
@@ -60,6 +61,13 @@ PRICE: dict[str, Reader] = {
 DIVIDEND: dict[str, Reader] = {**SERIES, "basis": choice(get_args(options.Basis))}
 CONTROL: dict[str, Reader] = {**SERIES, "name": text}
 STATE: dict[str, Reader] = {**SERIES}
+SURVEY: dict[str, Reader] = {
+    **SERIES,
+    "leg": text,
+    "horizon": tenor,
+    "growth": switch,
+    "unit": choice(get_args(options.Unit)),
+}
 ROLES: dict[str, dict[str, Reader]] = {
     "zero_yields": RATE,
     "deposits": RATE,
@@ -174,6 +182,33 @@ def read_controls(raw: Any, at: tuple[Path, str], problems: Problems) -> tuple[S
         if len(problems.lines) == before:
             controls.append(_declare(values.pop("name"), values, path))
     return tuple(controls)
+
+
+def read_surveys(raw: Any, at: tuple[Path, str], problems: Problems) -> tuple[Survey, ...]:
+    """Read the list of survey expectations, each of one leg over one horizon, from a file of its own."""
+    path, place = at
+    if not isinstance(raw, list):
+        problems.add(
+            f"{place}, key surveys",
+            f"{raw!r} is not allowed; allowed is a list of tables with leg, horizon, unit and file",
+        )
+        return ()
+    surveys = []
+    for entry in raw:
+        before = len(problems.lines)
+        values = read_table(entry, SURVEY, f"{place}, surveys", problems)
+        for key in ("leg", "horizon", "unit", "file"):
+            if isinstance(entry, dict) and key not in entry:
+                problems.add(f"{place}, surveys", f"the key {key} is missing")
+        if len(problems.lines) == before:
+            leg, horizon, growth = values.pop("leg"), values.pop("horizon"), values.pop("growth", False)
+            surveys.append(Survey(leg, horizon, _declare(f"survey of {leg}", values, path), growth))
+    places = [(survey.leg, str(survey.horizon)) for survey in surveys]
+    for leg, horizon in sorted({one for one in places if places.count(one) > 1}):
+        problems.add(
+            f"{place}, surveys", f"{leg!r} over {horizon} stands twice; allowed is one survey of a leg and horizon"
+        )
+    return tuple(surveys)
 
 
 def state_source(values: dict[str, Any], name: str, path: Path) -> Source:

@@ -29,7 +29,7 @@ from carrylab.schema import (
     text,
     whole,
 )
-from carrylab.sources import KIND_ROLES, read_controls, read_panel_columns, read_sources
+from carrylab.sources import KIND_ROLES, read_controls, read_panel_columns, read_sources, read_surveys
 
 INFERENCE: dict[str, Reader] = {
     "errors": choice(options.ERRORS),
@@ -57,6 +57,7 @@ MARKET: dict[str, Reader] = {
     "leave_out": several(text),
     "data": lambda value: value,
     "controls": lambda value: value,
+    "surveys": lambda value: value,
 }
 KIND_KEYS: dict[str, dict[str, Reader]] = {
     "bonds": {
@@ -87,7 +88,7 @@ TOP: dict[str, Reader] = {
     "state": lambda value: value,
     "period": lambda value: value,
 }
-DATA_RULES = ("missing_maturity", "missing_tenor", "controls")
+DATA_RULES = ("missing_maturity", "missing_tenor", "controls", "surveys")
 RENAMED = {"from": "first", "until": "last", "indices": "index_economy"}
 
 
@@ -162,6 +163,7 @@ def _market(
         return None
     data = _data(values.pop("data", {}), values, place, problems)
     settings = {key: top[key] for key in SETTINGS if key in top} | values
+    surveys = read_surveys(settings.pop("surveys", []), (path, place), problems)
     controls = read_controls(settings.pop("controls", []), (path, place), problems)
     if kind == "columns":
         sources, panel = read_panel_columns(data.get("panel", {}), (path, place), problems)
@@ -173,7 +175,9 @@ def _market(
     chosen = dict(inference) | {key: settings.pop(key) for key in INFERENCE if key in settings}
     fields = {RENAMED.get(key, key): value for key, value in settings.items()}
     fields.setdefault("home", None)
-    return Market(**fields, inference=Inference(**chosen), sources=sources, controls=controls, panel=panel)
+    return Market(
+        **fields, inference=Inference(**chosen), sources=sources, controls=controls, surveys=surveys, panel=panel
+    )
 
 
 def _data(raw: Any, values: dict[str, Any], place: str, problems: Problems) -> dict[str, Any]:

@@ -38,12 +38,16 @@ class Table:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class MarketData:
-    """All tables of one market by role, its added predictors, and the calendar of everything observed in the tables."""
+    """All tables of one market by role, its added predictors, and the calendar of everything observed in the tables.
+
+    `surveys` stand in the order of the market's own.
+    """
 
     market: Market
     tables: Mapping[str, tuple[Table, ...]]
     controls: tuple[Table, ...]
     calendar: Calendar
+    surveys: tuple[Table, ...] = ()
 
 
 def read_market(market: Market) -> MarketData:
@@ -57,7 +61,8 @@ def read_market(market: Market) -> MarketData:
     if not len(observed):
         raise DataError(f"market {market.name!r}: no observation lies between from and until; widen them")
     controls = tuple(_control(source, span) for source in market.controls)
-    return MarketData(market, tables, controls, make_calendar(market.interval, observed))
+    surveys = tuple(_control(survey.source, span) for survey in market.surveys)
+    return MarketData(market, tables, controls, make_calendar(market.interval, observed), surveys)
 
 
 def read_source(source: Source, *, interval: Interval, first: str | None, last: str | None) -> Table:

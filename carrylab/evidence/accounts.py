@@ -17,7 +17,7 @@ Row = dict[str, Any]
 def ledger_rows(data: MarketData) -> list[Row]:
     """One row a series and reason: how many cells were read, dropped and why, and used."""
     rows = []
-    for tables in (*data.tables.values(), data.controls):
+    for tables in (*data.tables.values(), data.controls, data.surveys):
         for table in tables:
             for entry in table.ledger.itertuples():
                 place = {

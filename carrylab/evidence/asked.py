@@ -8,10 +8,11 @@ from carrylab.evidence.case import Case
 from carrylab.evidence.parts import part_rows
 from carrylab.evidence.setting import Row
 from carrylab.evidence.states import state_rows
+from carrylab.evidence.surveys import survey_rows
 from carrylab.options import Questions
 
 # Each returns no rows where its question is not asked.
-OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (part_rows, state_rows)
+OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (part_rows, state_rows, survey_rows)
 OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = ()
 
 

@@ -28,6 +28,14 @@ class Labelled:
 
 
 @dataclass(frozen=True, eq=False, slots=True)
+class Expected:
+    """A survey's expectation of leg number `leg` at each origin, `values` (T, N) in the leg's own unit with holes."""
+
+    leg: int
+    values: Floats
+
+
+@dataclass(frozen=True, eq=False, slots=True)
 class Case:
     """One parity of one market at one horizon.
 
@@ -42,6 +50,7 @@ class Case:
     errors: ErrorOptions
     at_horizons: Rebuild
     states: tuple[Labelled, ...] = ()
+    surveys: tuple[Expected, ...] = ()
 
     @property
     def pooled(self) -> Fit:

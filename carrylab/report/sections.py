@@ -12,6 +12,7 @@ from carrylab.report.detail import check_lines, detail_tables, identity_lines, l
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
 from carrylab.report.slope_parts import part_tables
 from carrylab.report.states import state_tables
+from carrylab.report.surveys import survey_tables
 from carrylab.report.table import Table
 
 # A table, or a sentence or two.
@@ -71,6 +72,7 @@ def _there(table: Table | None) -> Iterator[Table]:
 EVIDENCE: tuple[Section, ...] = (
     Section("Parts of the slope", part_tables),
     Section("States", state_tables),
+    Section("Surveys", survey_tables),
 )
 SECTIONS: tuple[Section, ...] = (
     Section("The answer", answer_lines),
