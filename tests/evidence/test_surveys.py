@@ -76,8 +76,8 @@ def test_a_growth_is_taken_in_logs_and_a_weight_of_minus_one_turns_the_sign(tmp_
     ("survey", "said"),
     [
         (
-            SURVEY.replace("rate rise", "rate fall"),
-            "no parity has the leg 'rate fall' over 3m; did you mean 'rate rise'?",
+            SURVEY.replace("rate rise", "rate rse"),
+            "no parity has the leg 'rate rse' over 3m; did you mean 'rate rise'?",
         ),
         (SURVEY.replace('"3m"', '"12m"'), "no parity has the leg 'rate rise' over 12m"),
         (SURVEY.replace(', unit = "percent"', ""), "surveys: the key unit is missing"),
