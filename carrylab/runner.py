@@ -17,11 +17,11 @@ from carrylab.data.panel import curves
 from carrylab.data.read import MarketData, Table, read_market
 from carrylab.data.states import read_labels
 from carrylab.data.units import to_decimal
-from carrylab.errors import DataError, StudyError
+from carrylab.errors import DataError, SampleError, StudyError
 from carrylab.evidence import asked
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
-from carrylab.evidence.case import Case, Expected, Labelled
+from carrylab.evidence.case import Case, Expected, Labelled, Rebuild, Rebuilt
 from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
@@ -231,7 +231,7 @@ def estimate(built: Built, economies: Mapping[str, str], questions: Questions | 
     asking = questions or Questions()
     cases = tuple(_case(parity, built, economies, asking) for parity in built.parities)
     families = [case.fits for case in cases]
-    drawn = _drawn(built, families)
+    drawn = _drawn(built, families, draws_of(built.market.inference, families))
     rows = list(drawn.rows)
     said = [AVERAGED] if is_averaged(built.data) else []
     said += [drawn.refused] if drawn.refused else []
@@ -265,7 +265,13 @@ def _case(parity: Parity, built: Built, economies: Mapping[str, str], asking: Qu
     states = tuple(state for state in found if state is not None)
     rebuild = _rebuild(parity, built, economies)
     surveys = tuple(_surveys(parity, built.data))
-    return Case(parity, fits, terms, error_options(built.market.inference), rebuild, states, surveys)
+    options = error_options(built.market.inference)
+
+    def draw(families: Sequence[Sequence[Fit]]) -> DrawnRows:
+        wanted = built.market.inference.draws
+        return _drawn(built, families, FOR_PRINT if wanted is None else wanted)
+
+    return Case(parity, fits, terms, options, rebuild, draw, states, surveys)
 
 
 def _surveys(parity: Parity, data: MarketData) -> Iterator[Expected]:
@@ -287,22 +293,30 @@ def _labelled(state: State, fit: Fit, terms: Floats) -> Labelled | None:
     return Labelled(state.name, read_labels(state.source, state.name, fit.parity.calendar), note)
 
 
-def _rebuild(parity: Parity, built: Built, economies: Mapping[str, str]) -> Callable[[Sequence[Tenor]], list[Case]]:
-    """What builds one parity again at other horizons, with its pooled fit alone."""
+def _rebuild(parity: Parity, built: Built, economies: Mapping[str, str]) -> Rebuild:
+    """What builds one parity again at other horizons, with its pooled fit alone, or says why it cannot."""
 
-    def at_horizons(horizons: Sequence[Tenor]) -> list[Case]:
-        other = replace(built.market, horizons=tuple(horizons), parities=(parity.name,), by="pooled")
+    def at_horizon(horizon: Tenor) -> Case:
+        other = replace(built.market, horizons=(horizon,), parities=(parity.name,), by="pooled")
         data = replace(built.data, market=other)
-        again = [_kept(one, other) for one in MARKETS[other.kind](data, economies)]
-        return [_case(one, replace(built, market=other, data=data), economies) for one in again]
+        (again,) = MARKETS[other.kind](data, economies)
+        return _case(_kept(again, other), replace(built, market=other, data=data), economies)
+
+    def at_horizons(horizons: Sequence[Tenor]) -> Rebuilt:
+        cases, refused = [], []
+        for horizon in horizons:
+            try:
+                cases.append(at_horizon(horizon))
+            except (StudyError, DataError, SampleError) as why:
+                refused.append((horizon, str(why)))
+        return Rebuilt(tuple(cases), tuple(refused))
 
     return at_horizons
 
 
-def _drawn(built: Built, families: list[tuple[Fit, ...]]) -> DrawnRows:
+def _drawn(built: Built, families: Sequence[Sequence[Fit]], count: int) -> DrawnRows:
     """Rows of the draws under the null: of whole curves for bonds, of returns and signals for all else."""
-    market = built.market
-    count, seed = draws_of(market.inference, families), market.inference.seed
+    market, seed = built.market, built.market.inference.seed
     if market.kind != "bonds" or not count:
         return drawn_rows(families, count, seed)
     quoted = curves(built.data.tables["zero_yields"], built.data.calendar, "economy", "maturity")

@@ -9,13 +9,15 @@ import numpy as np
 import numpy.typing as npt
 
 from carrylab.data.calendar import Tenor
+from carrylab.evidence.drawn import DrawnRows
 from carrylab.evidence.setting import Fit, errors_of
 from carrylab.markets.parity import Parity
 from carrylab.regression.covariance import ErrorOptions
 from carrylab.regression.fit import fit
 from carrylab.regression.sample import Floats
 
-Rebuild = Callable[[Sequence[Tenor]], "list[Case]"]
+Draw = Callable[[Sequence[Sequence[Fit]]], DrawnRows]
+Rebuild = Callable[[Sequence[Tenor]], "Rebuilt"]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -36,12 +38,21 @@ class Expected:
 
 
 @dataclass(frozen=True, eq=False, slots=True)
+class Rebuilt:
+    """One parity at other horizons: a case for each that can be built, and why each other one cannot."""
+
+    cases: tuple[Case, ...]
+    refused: tuple[tuple[Tenor, str], ...]
+
+
+@dataclass(frozen=True, eq=False, slots=True)
 class Case:
     """One parity of one market at one horizon.
 
     `fits`: the pooled fit first, then one a group. `terms` (T, N, K): signal and added predictors with their holes,
     as known at each origin. `errors` as the study chose them. `at_horizons` builds the same parity at other horizons
-    from the same data, each with its pooled fit alone. `states` are those of the study, on the parity's calendar.
+    from the same data, each with its pooled fit alone. `draw` makes draws under the null for families of its
+    fits. `states` are those of the study, `surveys` those of the market, on the parity's calendar.
     """
 
     parity: Parity
@@ -49,6 +60,7 @@ class Case:
     terms: Floats
     errors: ErrorOptions
     at_horizons: Rebuild
+    draw: Draw
     states: tuple[Labelled, ...] = ()
     surveys: tuple[Expected, ...] = ()
 

@@ -9,6 +9,7 @@ import pandas as pd
 
 from carrylab.report.answer import answer_lines
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
+from carrylab.report.horizons import horizon_tables
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
 from carrylab.report.slope_parts import part_tables
 from carrylab.report.states import state_tables
@@ -70,6 +71,7 @@ def _there(table: Table | None) -> Iterator[Table]:
 
 # Answers to the further questions of a study, each in a module of its own beside this one.
 EVIDENCE: tuple[Section, ...] = (
+    Section("Horizons", horizon_tables),
     Section("Parts of the slope", part_tables),
     Section("States", state_tables),
     Section("Surveys", survey_tables),
