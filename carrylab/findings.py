@@ -56,8 +56,12 @@ COLUMNS: tuple[str, ...] = (
     "lags",
     "method",
     "note",
+    "p_holm",
+    "p_fdr",
+    "p_stepdown",
+    "n_tests",
 )
-COUNTS: tuple[str, ...] = ("n_dates", "n_entities", "n_obs", "lags")
+COUNTS: tuple[str, ...] = ("n_dates", "n_entities", "n_obs", "lags", "n_tests")
 KEY: tuple[str, ...] = ("section", "rank", "market", "parity", "leg", "horizon", "group", "sample", "term")
 # How a note begins where the p-value beside it rests on too little; reports mark such a p.
 DOUBTFUL = "p in doubt: "

@@ -26,6 +26,7 @@ from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
 from carrylab.evidence.latest import latest_rows
+from carrylab.evidence.many import adjust
 from carrylab.evidence.others import other_rows
 from carrylab.evidence.rules import require_found, rule_labels
 from carrylab.evidence.setting import Fit, Row, errors_of
@@ -99,7 +100,7 @@ def run(study: Study, *, audit: bool = False, progress: Progress | None = None) 
     audited = _audited(built, fitted, say) if audit else None
     return Results(
         study=study,
-        findings=to_frame(rows),
+        findings=to_frame(adjust(rows)),
         checks={one.market.name: one.checks for one in built},
         parities=tuple(parity for one in built for parity in one.parities),
         audit=audited,

@@ -6,6 +6,7 @@ from collections.abc import Callable, Sequence
 
 from carrylab.evidence.case import Case
 from carrylab.evidence.horizons import horizon_rows
+from carrylab.evidence.markets import across_market_rows
 from carrylab.evidence.parts import part_rows
 from carrylab.evidence.setting import Row
 from carrylab.evidence.states import state_rows
@@ -14,7 +15,7 @@ from carrylab.options import Questions
 
 # Each returns no rows where its question is not asked.
 OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (part_rows, state_rows, survey_rows)
-OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = (horizon_rows,)
+OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = (horizon_rows, across_market_rows)
 
 
 def case_rows(case: Case, asked: Questions) -> list[Row]:

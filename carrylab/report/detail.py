@@ -132,6 +132,12 @@ def _detail_notes(rows: pd.DataFrame) -> tuple[str, ...]:
     if len(weights):
         listed = ", ".join(f"{row['leg']} {row['weight']:+.4g}" for row in weights.to_dict("records"))
         said.append(f"Weights in the identity: {listed}.")
+    counts = rows.loc[(rows["term"] == "nothing paid") & (rows["n_tests"] > 1), "n_tests"]
+    if len(counts):
+        said.append(
+            f"This study tests {counts.iloc[0]:,.0f} times whether nothing is paid: findings.csv holds the p-values "
+            "adjusted for that (Holm, false discovery; stepped down where there are draws)."
+        )
     return tuple(said)
 
 

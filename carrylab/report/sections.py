@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import pandas as pd
 
+from carrylab.report.across import across_tables
 from carrylab.report.answer import answer_lines
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
 from carrylab.report.horizons import horizon_tables
@@ -75,6 +76,7 @@ EVIDENCE: tuple[Section, ...] = (
     Section("Parts of the slope", part_tables),
     Section("States", state_tables),
     Section("Surveys", survey_tables),
+    Section("Across markets", across_tables),
 )
 SECTIONS: tuple[Section, ...] = (
     Section("The answer", answer_lines),
