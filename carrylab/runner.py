@@ -21,7 +21,8 @@ from carrylab.errors import DataError, SampleError, StudyError
 from carrylab.evidence import asked
 from carrylab.evidence.accounts import check_rows, identity_row, ledger_rows, regression_ledger_rows
 from carrylab.evidence.across import across_rows
-from carrylab.evidence.case import Case, Expected, Labelled, Rebuild, Rebuilt
+from carrylab.evidence.case import Case, Curve, Expected, Labelled, Rebuild, Rebuilt
+from carrylab.evidence.curve import knots
 from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
 from carrylab.evidence.joint import group_rows
@@ -272,7 +273,18 @@ def _case(parity: Parity, built: Built, economies: Mapping[str, str], asking: Qu
         wanted = built.market.inference.draws
         return _drawn(built, families, FOR_PRINT if wanted is None else wanted)
 
-    return Case(parity, fits, terms, options, rebuild, draw, states, surveys)
+    curve = _curve(parity, built) if asking and asking.components and parity.name == "forward-spot" else None
+    return Case(parity, fits, terms, options, rebuild, draw, states, surveys, curve)
+
+
+def _curve(parity: Parity, built: Built) -> Curve:
+    """Yields of the parity's economies at its horizon and maturities."""
+    quoted = curves(built.data.tables["zero_yields"], built.data.calendar, "economy", "maturity")
+    known = YieldCurves(quoted, built.market)
+    economies = tuple(dict.fromkeys(entity.economy for entity in parity.entities))
+    columns = [quoted.codes.index(code) for code in economies]
+    tenors = knots(parity.horizon, [entity.maturity for entity in parity.entities])
+    return Curve(economies, tuple(tenors), np.stack([known.yields(tenor)[:, columns] for tenor in tenors], axis=2))
 
 
 def _surveys(parity: Parity, data: MarketData) -> Iterator[Expected]:

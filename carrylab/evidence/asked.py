@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 
 from carrylab.evidence.case import Case
+from carrylab.evidence.curve import curve_rows
 from carrylab.evidence.horizons import horizon_rows
 from carrylab.evidence.markets import across_market_rows
 from carrylab.evidence.parts import part_rows
@@ -14,7 +15,12 @@ from carrylab.evidence.surveys import survey_rows
 from carrylab.options import Questions
 
 # Each returns no rows where its question is not asked.
-OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (part_rows, state_rows, survey_rows)
+OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (
+    part_rows,
+    state_rows,
+    survey_rows,
+    curve_rows,
+)
 OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = (horizon_rows, across_market_rows)
 
 

@@ -38,6 +38,15 @@ class Expected:
 
 
 @dataclass(frozen=True, eq=False, slots=True)
+class Curve:
+    """Log zero yields per year (T, E, M) of some economies at the `tenors` a bond parity rests on."""
+
+    economies: tuple[str, ...]
+    tenors: tuple[Tenor, ...]
+    yields: Floats
+
+
+@dataclass(frozen=True, eq=False, slots=True)
 class Rebuilt:
     """One parity at other horizons: a case for each that can be built, and why each other one cannot."""
 
@@ -52,7 +61,8 @@ class Case:
     `fits`: the pooled fit first, then one a group. `terms` (T, N, K): signal and added predictors with their holes,
     as known at each origin. `errors` as the study chose them. `at_horizons` builds the same parity at other horizons
     from the same data, each with its pooled fit alone. `draw` makes draws under the null for families of its
-    fits. `states` are those of the study, `surveys` those of the market, on the parity's calendar.
+    fits. `states` are those of the study, `surveys` those of the market, on the parity's calendar; `curve` the
+    yields of a forward-spot parity.
     """
 
     parity: Parity
@@ -63,6 +73,7 @@ class Case:
     draw: Draw
     states: tuple[Labelled, ...] = ()
     surveys: tuple[Expected, ...] = ()
+    curve: Curve | None = None
 
     @property
     def pooled(self) -> Fit:

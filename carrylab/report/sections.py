@@ -9,6 +9,7 @@ import pandas as pd
 
 from carrylab.report.across import across_tables
 from carrylab.report.answer import answer_lines
+from carrylab.report.curve import curve_tables
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
 from carrylab.report.horizons import horizon_tables
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
@@ -75,6 +76,7 @@ EVIDENCE: tuple[Section, ...] = (
     Section("Horizons", horizon_tables),
     Section("Parts of the slope", part_tables),
     Section("States", state_tables),
+    Section("The rest of the curve", curve_tables),
     Section("Surveys", survey_tables),
     Section("Across markets", across_tables),
 )
