@@ -56,6 +56,14 @@ def routines() -> None:
         print(line)
 
 
+def horizons() -> None:
+    """All horizons at once against PanelOLS and a textbook loop."""
+    from bench_horizons import lines
+
+    for line in lines():
+        print(line)
+
+
 if __name__ == "__main__":
     python = prepare("test")
     if Path(sys.prefix).resolve() != python.parent.parent.resolve():
@@ -63,3 +71,4 @@ if __name__ == "__main__":
     start_up()
     demo_study()
     routines()
+    horizons()
