@@ -9,8 +9,8 @@ import numpy as np
 from scipy.sparse import csr_array
 
 from carrylab.errors import InferenceError
-from carrylab.regression.effects import Effects, absorb
 from carrylab.regression.batch import factor, invert, running, solve
+from carrylab.regression.effects import Effects, absorb
 from carrylab.regression.sample import Bools, Floats, Ints, Sample
 
 

@@ -11,6 +11,7 @@ from typing import Protocol
 import numpy as np
 
 from carrylab.errors import InferenceError
+from carrylab.regression.batch import bartlett, running
 from carrylab.regression.block_moments import (
     PanelMoments,
     Solved,
@@ -21,7 +22,6 @@ from carrylab.regression.block_moments import (
     summed,
 )
 from carrylab.regression.effects import Effects
-from carrylab.regression.batch import bartlett, running
 from carrylab.regression.sample import Floats, Ints, Sample
 
 CHUNK = 1_000  # draws whose sums are taken at once
@@ -118,7 +118,7 @@ def block_length(dates: int, overlap: int) -> int:
 
     The order T^(1/3) is that of Kuensch (1989, Annals of Statistics 17:1217) for variances; the floor is ours.
     """
-    return min(max(math.ceil(float(dates) ** (1 / 3)), overlap + 1), dates)
+    return min(max(math.ceil(math.cbrt(dates)), overlap + 1), dates)
 
 
 def date_blocks(samples: Sequence[Sample], count: int, *, seed: int, length: int | None = None) -> DateBlocks:

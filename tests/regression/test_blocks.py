@@ -8,10 +8,10 @@ import numpy as np
 import pytest
 
 from carrylab.errors import InferenceError
+from carrylab.regression.batch import bartlett, factor, invert, running, solve
 from carrylab.regression.blocks import block_draws, block_length, block_slopes, date_blocks
 from carrylab.regression.covariance import ErrorOptions, standard_errors
 from carrylab.regression.fit import fit
-from carrylab.regression.batch import bartlett, factor, invert, running, solve
 from carrylab.regression.sample import make_sample
 
 
