@@ -5,13 +5,14 @@ from __future__ import annotations
 import sys
 from collections.abc import Callable
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 import click
 
 from carrylab import __version__
 from carrylab.errors import CarrylabError
 
+Figures = tuple[Literal["svg", "pdf", "png"], ...]
 STUDY = click.argument("study", type=click.Path(path_type=Path))
 
 
@@ -62,7 +63,10 @@ def check(study: Path) -> None:
 @click.option("--audit", is_flag=True, help="Recompute the headline with linearmodels and statsmodels.")
 @click.option("--parquet", is_flag=True, help="Insist on findings.parquet (written wherever pyarrow is installed).")
 @click.option("--width", type=click.IntRange(60, 400), default=100, show_default=True, help="Columns of text.")
-def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int) -> None:
+@click.option(
+    "--figures", multiple=True, type=click.Choice(["svg", "pdf", "png"]), help="Figures as files too; may be repeated."
+)
+def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int, figures: Figures) -> None:
     """Run STUDY, print the report and write the run folder."""
     import carrylab
     from carrylab.record import require_place
@@ -70,7 +74,7 @@ def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int) 
     target = into or Path(f"{study.stem}_results")
     require_place(target, parquet=parquet)
     results = carrylab.run(carrylab.read_study(study), audit=audit, progress=_progress())
-    results.save(target, parquet=parquet, width=width)
+    results.save(target, parquet=parquet, width=width, figures=figures)
     click.echo((target / "report.txt").read_text(encoding="utf-8"))
     click.echo(f"Run folder: {target}")
 

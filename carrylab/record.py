@@ -6,10 +6,11 @@ import csv
 import hashlib
 import json
 import platform
+import re
 import tempfile
 from collections import Counter
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from importlib import metadata
 from importlib.util import find_spec
 from pathlib import Path
@@ -23,20 +24,25 @@ from carrylab.errors import DataError, ExtraError
 from carrylab.findings import COLUMNS, TEXTS
 
 FORMAT = "carrylab run 1"
-PACKAGES = ("carrylab", "numpy", "pandas", "scipy", "tabulate", "linearmodels", "statsmodels")
+PACKAGES = ("carrylab", "numpy", "pandas", "scipy", "tabulate", "linearmodels", "statsmodels", "matplotlib", "jinja2")
 NUMBERS = tuple(name for name in COLUMNS if name not in TEXTS)
-FILES = ("report.txt", "findings.csv", "findings.parquet", "panel.csv", "run.json")
+FILES = ("report.txt", "report.html", "figures", "findings.csv", "findings.parquet", "panel.csv", "run.json")
+FIGURE = re.compile(r"[a-z0-9-]+\.(svg|pdf|png)")
 RISKY = ("=", "+", "-", "@", "\t", "\r", "\n", "\0")
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Run:
-    """What a run folder holds: the report, the two tables, and the account of how they were made."""
+    """What a run folder holds: the report, the two tables, and the account of how they were made.
+
+    `more` are further files by name, such as report.html or figures/shares.svg; each name stands in `FILES`.
+    """
 
     report: str
     findings: pd.DataFrame
     panel: pd.DataFrame
     account: Mapping[str, Any]
+    more: Mapping[str, bytes] = field(default_factory=dict)
 
 
 def save(run: Run, directory: Path, *, parquet: bool) -> Path:
@@ -91,11 +97,21 @@ def require_place(directory: Path, *, parquet: bool) -> None:
             f"{directory}: exists and is no run folder of carrylab; name another with --into, or move it away"
         )
     # Hidden files are a file manager's own.
-    others = sorted(name for name in inside if name not in FILES and not name.startswith("."))
+    others = sorted(name for name in (*inside, *_in_figures(directory)) if not _is_ours(name))
     if others:
         raise DataError(
             f"{directory}: holds {others[0]!r}, which no run wrote; move it away, or name another folder with --into"
         )
+
+
+def _in_figures(directory: Path) -> list[str]:
+    folder = directory / "figures"
+    return [f"figures/{entry.name}" for entry in folder.iterdir()] if folder.is_dir() else []
+
+
+def _is_ours(name: str) -> bool:
+    own = name.removeprefix("figures/")
+    return name in FILES or own.startswith(".") or (own != name and FIGURE.fullmatch(own) is not None)
 
 
 def _is_run(directory: Path) -> bool:
@@ -111,6 +127,9 @@ def _write(run: Run, folder: Path, *, parquet: bool) -> None:
     write_csv(run.panel, folder / "panel.csv")
     if parquet:
         run.findings.to_parquet(folder / "findings.parquet", index=False)
+    for name, content in run.more.items():
+        (folder / name).parent.mkdir(exist_ok=True)
+        (folder / name).write_bytes(content)
     text = json.dumps({"format": FORMAT, **run.account}, indent=2, ensure_ascii=False)
     (folder / "run.json").write_text(text + "\n", encoding="utf-8", newline="\n")
 

@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -13,8 +14,12 @@ import pandas as pd
 from carrylab import record
 from carrylab.audit import Audit
 from carrylab.data.checks import Check
+from carrylab.evidence.case import Case
+from carrylab.evidence.pictures import picture_of
 from carrylab.markets.parity import Parity
 from carrylab.options import Study
+from carrylab.report.figure import Figure
+from carrylab.report.figures import figures_of
 from carrylab.report.html import html_table
 from carrylab.report.side_by_side import side_by_side
 from carrylab.report.text import report_text
@@ -24,13 +29,15 @@ from carrylab.report.text import report_text
 class Results:
     """One run. `findings` is a tidy table, one row per coefficient or statistic, under a unique key.
 
-    `checks` by market, `parities` as built, `audit` where it was asked for, `timings` in seconds by step.
+    `checks` by market, `parities` as built, `cases` with their regressions, `audit` where it was asked for, `timings`
+    in seconds by step.
     """
 
     study: Study
     findings: pd.DataFrame
     checks: Mapping[str, tuple[Check, ...]]
     parities: tuple[Parity, ...]
+    cases: tuple[Case, ...]
     audit: Audit | None
     timings: Mapping[str, float]
 
@@ -51,21 +58,57 @@ class Results:
         """Signal and legs of every row, so that anyone can fit the regressions again."""
         return pd.concat([_panel_of(parity) for parity in self.parities], ignore_index=True)
 
-    def save(self, directory: str | os.PathLike[str], *, parquet: bool = False, width: int = 100) -> Path:
-        """Write the run folder: report.txt, findings.csv, panel.csv, run.json; findings.parquet with pyarrow."""
+    def figures(self) -> list[Figure]:
+        """Every figure that these findings have something for."""
+        return figures_of(self.findings, [picture_of(case) for case in self.cases])
+
+    def page(self) -> str:
+        """The whole report as one self-contained page of HTML with all figures."""
+        from carrylab.report.page import Recipe, report_page
+
+        account = self._account()
+        recipe = Recipe(
+            study=self.study.text,
+            command=f"carrylab run {self.study.path.name}{'' if self.audit is None else ' --audit'}",
+            versions=account["versions"],
+            hashes=account["data_sha256"],
+            seeds=account["seeds"],
+        )
+        audited = () if self.audit is None else self.audit.lines()
+        return report_page(self.findings, recipe, title=self.study.title, audit=audited, figures=self.figures())
+
+    def save(
+        self,
+        directory: str | os.PathLike[str],
+        *,
+        parquet: bool = False,
+        width: int = 100,
+        page: bool = True,
+        figures: Sequence[str] = (),
+    ) -> Path:
+        """Write the run folder: report.txt, findings.csv, panel.csv, run.json; findings.parquet with pyarrow.
+
+        `page`: report.html too. `figures`: every figure as a file in each of these formats, of svg, pdf and png.
+        """
+        more = {"report.html": self.page().encode()} if page else {}
+        if figures:
+            from carrylab.report.figures_files import figure_files
+
+            more |= {f"figures/{name}": content for name, content in figure_files(self.figures(), figures)}
+        timings = {"seconds": {step: round(spent, 3) for step, spent in self.timings.items()}}
+        run = record.Run(self.report(width), self.findings, self.panel(), self._account() | timings, more)
+        return record.save(run, Path(directory), parquet=parquet)
+
+    def _account(self) -> dict[str, Any]:
+        """Study text, SHA-256 of the data files, versions and seeds."""
         files = [s.path for market in self.study.markets for found in market.sources.values() for s in found]
         files += [source.path for market in self.study.markets for source in market.controls]
-        files += [survey.source.path for market in self.study.markets for survey in market.surveys]
-        files += [state.source.path for state in self.study.questions.states if state.source is not None]
-        account = {
+        return {
             "study": self.study.text,
             "data_sha256": record.hashes(files),
             "versions": record.versions(),
             "seeds": {market.name: market.inference.seed for market in self.study.markets},
-            "seconds": {step: round(spent, 3) for step, spent in self.timings.items()},
         }
-        run = record.Run(self.report(width), self.findings, self.panel(), account)
-        return record.save(run, Path(directory), parquet=parquet)
 
     def __repr__(self) -> str:
         return self.report()

@@ -104,6 +104,7 @@ def run(study: Study, *, audit: bool = False, progress: Progress | None = None) 
         findings=to_frame(adjust(rows)),
         checks={one.market.name: one.checks for one in built},
         parities=tuple(parity for one in built for parity in one.parities),
+        cases=tuple(cases),
         audit=audited,
         timings=timings,
     )

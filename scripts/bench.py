@@ -39,8 +39,33 @@ def demo_study() -> None:
     with tempfile.TemporaryDirectory() as folder:
         start = time.perf_counter()
         results = carrylab.run(carrylab.read_study(STUDY))
-        results.save(Path(folder) / "run")
-        print(f"demo study: {time.perf_counter() - start:.2f} s of work after imports (goal 3)")
+        results.save(Path(folder) / "run", page=False)
+        print(f"demo study: {time.perf_counter() - start:.2f} s of work after imports, without the page (goal 3)")
+        start = time.perf_counter()
+        text = results.page()
+        spent = time.perf_counter() - start
+        print(
+            f"its page with all figures: {spent:.2f} s after the estimates (goal 5), {len(text.encode()) / 1e6:.2f} MB"
+        )
+
+
+def first_figure() -> None:
+    """The report's first figure against a first figure of matplotlib alone, each in a new interpreter."""
+    plain = (
+        "from matplotlib.figure import Figure; from matplotlib.backends.backend_svg import FigureCanvasSVG as Canvas;"
+        "import io; figure = Figure(); Canvas(figure); figure.add_subplot().plot([1, 2]); figure.savefig(io.BytesIO())"
+    )
+    own = (
+        "import carrylab.results; from carrylab.report.figure import Panel, axes_in;"
+        "from carrylab.report.figures_files import inline_svg;"
+        "panel = Panel('a', '', '', '', 280, lambda canvas: axes_in(canvas, (50, 40, 8, 8)).plot([1, 2]));"
+        "inline_svg(panel)"
+    )
+    imports = best([sys.executable, "-c", "import carrylab.results"]) - best([sys.executable, "-c", "pass"])
+    print(
+        f"first figure: {best([sys.executable, '-c', own]) - imports:.2f} s beyond carrylab's imports, "
+        f"matplotlib alone {best([sys.executable, '-c', plain]):.2f} s"
+    )
 
 
 def routines() -> None:
@@ -56,19 +81,11 @@ def routines() -> None:
         print(line)
 
 
-def horizons() -> None:
-    """All horizons at once against PanelOLS and a textbook loop."""
-    from bench_horizons import lines
-
-    for line in lines():
-        print(line)
-
-
 if __name__ == "__main__":
     python = prepare("test")
     if Path(sys.prefix).resolve() != python.parent.parent.resolve():
         sys.exit(subprocess.run([str(python), __file__], check=False).returncode)
     start_up()
     demo_study()
+    first_figure()
     routines()
-    horizons()

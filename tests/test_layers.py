@@ -19,7 +19,7 @@ MAY_IMPORT = {
     "data": {"options", "errors"},
     "markets": {"data", "options", "errors"},
     "regression": {"errors"},
-    "report": {"errors", "findings"},
+    "report": {"errors", "findings", "data.calendar"},
     "findings": set(),
     "record": {"errors", "findings", "report", "options"},
     "audit": {"regression", "errors"},

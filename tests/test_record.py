@@ -30,6 +30,7 @@ RUN = record.Run(
     account={"study": 'title = "T"\n', "seconds": {"estimate": 0.1}},
 )
 ALL = {"report.txt", "findings.csv", "findings.parquet", "panel.csv", "run.json"}
+WITH_FORMS = replace(RUN, more={"report.html": b"<!doctype html>", "figures/path-1.svg": b"<svg/>"})
 # First characters that make a text a formula in spreadsheets (OWASP ASVS 1.2.10; CWE-1236; CR and LF from memory).
 FORMULAS = ["=1+1", "+1", "-1", "@SUM(A1)", "\tx", "\rx", "\nx", "\0x"]
 TEXTS = st.text(st.characters(codec="utf-8"), max_size=8) | st.sampled_from(FORMULAS)
@@ -37,7 +38,7 @@ NUMBERS = st.floats(allow_nan=True, allow_infinity=True)
 
 
 def contents(folder: Path) -> dict[str, bytes]:
-    return {entry.name: entry.read_bytes() for entry in folder.iterdir()}
+    return {entry.relative_to(folder).as_posix(): entry.read_bytes() for entry in folder.rglob("*") if entry.is_file()}
 
 
 def findings_of(values: list[tuple[str, float]]) -> pd.DataFrame:
@@ -57,13 +58,22 @@ def read_cells(path: Path) -> list[list[str]]:
 def test_a_run_folder_holds_these_files(tmp_path: Path) -> None:
     assert record.save(RUN, tmp_path / "new" / "run", parquet=True) == tmp_path / "new" / "run"
     found = contents(tmp_path / "new" / "run")
-    assert set(found) == ALL == set(record.FILES)
+    assert set(found) == ALL
+    assert set(found) <= set(record.FILES)
     assert found["report.txt"] == b"A report\n"
     account = json.loads(found["run.json"])
     assert account == {"format": "carrylab run 1", "study": 'title = "T"\n', "seconds": {"estimate": 0.1}}
     assert "Bönds".encode() in found["findings.csv"]
     assert found["panel.csv"] == b"date,signal\n2000-01,0.1\n2000-02,-0.2\n"
     assert {entry.name for entry in (tmp_path / "new").iterdir()} == {"run"}
+
+
+def test_further_forms_stand_beside_the_report(tmp_path: Path) -> None:
+    folder = record.save(WITH_FORMS, tmp_path / "run", parquet=False)
+    assert (folder / "report.html").read_bytes() == b"<!doctype html>"
+    assert (folder / "figures" / "path-1.svg").read_bytes() == b"<svg/>"
+    record.save(RUN, folder, parquet=False)
+    assert not (folder / "figures").exists()
 
 
 def test_the_same_run_gives_the_same_bytes(tmp_path: Path) -> None:
@@ -119,6 +129,11 @@ def run_with_notes(place: Path) -> None:
     (place / "my notes.txt").write_text("mine", encoding="utf-8")
 
 
+def run_with_a_photograph(place: Path) -> None:
+    record.save(WITH_FORMS, place, parquet=False)
+    (place / "figures" / "Me.jpg").write_text("mine", encoding="utf-8")
+
+
 @pytest.mark.parametrize(
     ("make", "said"),
     [
@@ -126,6 +141,7 @@ def run_with_notes(place: Path) -> None:
         (folder_with_another_account, "is no run folder"),
         (a_file, "is no run folder"),
         (run_with_notes, "holds 'my notes.txt', which no run wrote"),
+        (run_with_a_photograph, "holds 'figures/Me.jpg', which no run wrote"),
     ],
 )
 def test_what_others_wrote_is_never_replaced(make: Callable[[Path], None], said: str, tmp_path: Path) -> None:

@@ -153,7 +153,7 @@ def test_the_same_run_twice_gives_the_same_bytes(tmp_path: Path) -> None:
     for name in ("first", "second"):
         carrylab.run(carrylab.read_study(path)).save(tmp_path / name, parquet=True)
     names = {entry.name for entry in (tmp_path / "first").iterdir()}
-    assert names == {"report.txt", "findings.csv", "findings.parquet", "panel.csv", "run.json"}
+    assert names == {"report.txt", "report.html", "findings.csv", "findings.parquet", "panel.csv", "run.json"}
     for name in names - {"run.json"}:
         assert (tmp_path / "first" / name).read_bytes() == (tmp_path / "second" / name).read_bytes(), name
 

@@ -20,6 +20,8 @@ from carrylab.report.table import Table
 
 # A table, or a sentence or two.
 Piece = Table | str
+# Sections that the page sets in a place or a manner of its own.
+ANSWER, DETAIL, CAUTIONS_HEAD = "The answer", "Market by market", "Cautions"
 CAUTIONS = (
     "Not investment advice. Everything here is in sample, and a premium in sample is no forecast.",
     "Before costs, margin, tax and capital controls. Carry earns little by little and loses in crashes; a peg that "
@@ -81,10 +83,10 @@ EVIDENCE: tuple[Section, ...] = (
     Section("Across markets", across_tables),
 )
 SECTIONS: tuple[Section, ...] = (
-    Section("The answer", answer_lines),
+    Section(ANSWER, answer_lines),
     Section("Side by side", _own_spreads),
     Section("Carry, the same signal in every market", _carry),
-    Section("Market by market", detail_tables),
+    Section(DETAIL, detail_tables),
     Section("Newest signals", _latest),
     *EVIDENCE,
     Section("Load checks", check_lines),
@@ -96,5 +98,5 @@ SECTIONS: tuple[Section, ...] = (
 def parts_of(findings: pd.DataFrame, audit: Iterable[str] = ()) -> list[Part]:
     """Every section that has something to say, the lines of an audit and the cautions last."""
     parts = [Part(section.title, tuple(section.write(findings))) for section in SECTIONS]
-    parts += [Part("Audit", tuple(audit)), Part("Cautions", CAUTIONS)]
+    parts += [Part("Audit", tuple(audit)), Part(CAUTIONS_HEAD, CAUTIONS)]
     return [part for part in parts if part.pieces]
