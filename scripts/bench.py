@@ -81,6 +81,14 @@ def routines() -> None:
         print(line)
 
 
+def horizons() -> None:
+    """All horizons at once against PanelOLS and a textbook loop."""
+    from bench_horizons import lines
+
+    for line in lines():
+        print(line)
+
+
 if __name__ == "__main__":
     python = prepare("test")
     if Path(sys.prefix).resolve() != python.parent.parent.resolve():
@@ -89,3 +97,4 @@ if __name__ == "__main__":
     demo_study()
     first_figure()
     routines()
+    horizons()

@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 
 import numpy as np
 
-from carrylab.data.calendar import Interval, Tenor, parse_tenor
+from carrylab.data.calendar import Interval, Tenor, parse_tenor, steps_in
 from carrylab.errors import InferenceError, SampleError
 from carrylab.evidence.case import Case, weighted
 from carrylab.evidence.joint import fallback_cosines
-from carrylab.evidence.setting import Fit, Row
+from carrylab.evidence.setting import Fit, Row, tested
 from carrylab.evidence.shares import share_rows
 from carrylab.options import Profile, Questions
+from carrylab.regression.cumulated import cumulated
 from carrylab.regression.longrun import cosine_count
 from carrylab.regression.sample import Floats
 from carrylab.regression.uniform import sup_t
@@ -22,7 +25,7 @@ STEP: dict[Interval, str] = {"day": "1d", "week": "1w", "month": "1m", "quarter"
 DISTANT = ("forward-spot-far", "yield-spread-to-maturity")  # whose horizon is set by the maturity
 TERMS = ("signal", "nothing paid", "all paid", "resolved premium share", "sum of shares")
 CHANCE = ("slope by chance", "R2 by chance", "nothing paid", "stepdown")
-COMMON = "common origins"
+COMMON, ROLLED = "common origins", "rolled over"
 SEED = 7
 
 
@@ -61,8 +64,42 @@ def _profile(case: Case, profile: Profile) -> Iterator[Row]:
         yield place | {"horizon": str(fits[-1].parity.horizon)} | _joint(fits)
         yield from _chance(case, fits)
     yield from (place | row for row in _half(fits))
+    yield from _rolled(case, profile)
     if profile.common_sample and len(fits) > 1:
         yield from _of_fits(list(_on_common_origins(again.cases)))
+
+
+def _rolled(case: Case, profile: Profile) -> Iterator[Row]:
+    """One-period excess returns rolled over, cumulated to every horizon on today's signal; needs no quotes."""
+    fit = case.pooled
+    at = fit.leg_of("return")
+    outcome = None if at is None else fit.sample.one_step[at]
+    if at is None or outcome is None or outcome.outcomes.ndim == 3 or (outcome.weights != 1).any():
+        return
+    if fit.estimate.effects != "entity" or len(fit.sample.terms) > 1 or case.parity.calendar.interval == "day":
+        return
+    horizons = candidates("", case.parity.calendar.interval, profile)
+    steps = [steps_in(horizon, case.parity.calendar.interval) for horizon in horizons]
+    whole = [(horizon, step) for horizon, step in zip(horizons, steps, strict=True) if step is not None]
+    try:
+        found = cumulated(fit.parity_signal, outcome.outcomes, [step for _, step in whole])
+    except SampleError as refused:
+        yield replace(fit, name=ROLLED).place() | {"section": "horizons", "term": "not built", "note": str(refused)}
+        return
+    leg = case.parity.legs[at]
+    place = replace(fit, name=ROLLED).place() | {"section": "horizons", "leg": leg.name, "role": leg.role}
+    method = "entity effects; Hodrick 1B, one-period outcomes rolled over, valid at the null of no premium; normal"
+    for number, (horizon, _) in enumerate(whole):
+        slope, error = float(found.slopes[number]), float(found.one_period[number])
+        yield place | {
+            "horizon": str(horizon),
+            "term": "signal",
+            **tested(slope, error, 0.0, math.inf, fit.confidence),
+            "r2": float(found.r2[number]),
+            "n_obs": int(found.n_obs[number]),
+            "n_dates": int(found.n_dates[number]),
+            "method": method,
+        }
 
 
 def _on_common_origins(cases: Sequence[Case]) -> Iterator[Fit]:

@@ -52,9 +52,18 @@ def interval(slope: Floats, statistic: Floats, draws: Floats, *, null: Floats, c
     and the persistence stay those of the null, so it is exact for slopes near it; use t with errors that hold away
     from the null (cosines), not 1B.
     """
-    error = (slope - null) / statistic
-    lower, upper = band(draws, confidence)
+    return percentile_t(slope, (slope - null) / statistic, draws, confidence)
+
+
+def percentile_t(slope: Floats, error: Floats, statistics: Floats, confidence: float = 0.95) -> Floats:
+    """Ends (2, ...) of b - s q for errors s and the upper and lower quantile q of studentised draws (B, ...)."""
+    lower, upper = band(statistics, confidence)
     return np.stack([slope - error * upper, slope - error * lower])
+
+
+def uniform_reach(statistics: Floats, confidence: float = 0.95) -> float:
+    """The number of standard errors that covers all H slopes at once in `confidence` of studentised draws (B, H)."""
+    return float(np.quantile(np.abs(statistics).max(axis=1), confidence))
 
 
 def rarity(statistic: Floats, draws: Floats) -> tuple[Floats, Floats]:

@@ -81,3 +81,19 @@ def test_the_report_says_where_one_half_is_passed(results) -> None:
     assert "by horizon" in report
     assert "The expectation share" in report
     assert "one half" in report
+
+
+def test_rolled_over_needs_no_quotes_and_starts_at_one_period(tmp_path: Path) -> None:
+    """At one month the slope of the month's excess return on the signal, at six months that of six added up."""
+    text = worlds.CURRENCIES.replace('["3m"]', '["1m"]').replace('tenor = "3m"', 'tenor = "1m"')
+    text += '[evidence]\nhorizons = { until = "6m" }\n'
+    results = carrylab.run(carrylab.read_study(worlds.write(tmp_path, text, **worlds.currencies())))
+    rolled = results.findings.query("section == 'horizons' and sample == 'rolled over'").set_index("horizon")
+    panel = results.panel().pivot_table(index="date", columns="entity", values=["signal", "excess return"])
+    for months in (1, 6):
+        paid = sum(panel["excess return"].shift(-step) for step in range(months)).dropna()
+        signal = panel["signal"].loc[paid.index]
+        x, y = signal - signal.mean(), paid - paid.mean()
+        slope = (x * y).to_numpy().sum() / (x * x).to_numpy().sum()
+        assert rolled.loc[f"{months}m", "estimate"] == pytest.approx(slope)
+    assert list(rolled.index) == [f"{months}m" for months in range(1, 7)]

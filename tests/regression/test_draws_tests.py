@@ -10,8 +10,10 @@ from carrylab.regression.draws_tests import (
     interval,
     joint,
     one_tailed,
+    percentile_t,
     rarity,
     stepdown,
+    uniform_reach,
     upper_band,
 )
 
@@ -46,6 +48,18 @@ def test_interval_by_hand():
     draws = np.linspace(-3.0, 1.0, 1001)[:, None]
     ends = interval(np.array([2.0]), np.array([4.0]), draws, null=np.array([0.0]), confidence=0.999999)
     assert np.allclose(ends[:, 0], [1.5, 3.5], atol=1e-4)
+
+
+def test_percentile_t_by_hand():
+    """b = 2 with error .5; t* between -1 and 3: 2 - .5 x 3 to 2 + .5 x 1, the longer side where t* is short."""
+    ends = percentile_t(np.array([2.0]), np.array([0.5]), np.linspace(-1.0, 3.0, 1001)[:, None], 0.999999)
+    assert np.allclose(ends[:, 0], [0.5, 2.5], atol=1e-4)
+
+
+def test_the_uniform_reach_by_hand():
+    """The larger of |t*| in each of four draws: 1, 2, 4, 3; three quarters of the way up they reach 3.25."""
+    draws = np.array([[1.0, -0.5], [0.1, 2.0], [-4.0, 1.0], [3.0, -3.0]])
+    assert uniform_reach(draws, 0.75) == pytest.approx(3.25)
 
 
 def test_the_interval_and_the_p_value_agree_at_the_null():
