@@ -41,6 +41,7 @@ Errors = Literal[
 ]
 Factor = Literal["none", "n/(n-k)", "clusters", "clusters, one factor"]
 Reference = Literal["normal", "t"]
+Joint = Literal["auto", "cosine", "bartlett"]
 Role = Literal["return", "fundamental", "carried over", "approximation", "other"]
 
 PARITIES: dict[str, tuple[str, ...]] = {
@@ -128,7 +129,7 @@ class Inference:
     """How standard errors are made. `lags` and `factor` of None mean the stated rule of the error kind.
 
     `draws` under the null: None makes as many as a printed p-value needs in a market where the automatic choice of
-    errors calls for them, and none elsewhere; 0 means none.
+    errors calls for them, and none elsewhere; 0 means none. `joint` is the covariance of joint tests.
     """
 
     errors: Errors = "auto"
@@ -137,6 +138,7 @@ class Inference:
     reference: Reference | None = None
     confidence: float = 0.95
     draws: int | None = None
+    joint: Joint = "auto"
     seed: int = 7
 
 

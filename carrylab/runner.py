@@ -25,7 +25,7 @@ from carrylab.evidence.case import Case, Curve, Expected, Labelled, Rebuild, Reb
 from carrylab.evidence.curve import knots
 from carrylab.evidence.drawn import DrawnRows, drawn_rows
 from carrylab.evidence.drawn_curves import curve_rows
-from carrylab.evidence.joint import group_rows
+from carrylab.evidence.joint import group_rows, study_joint_rows
 from carrylab.evidence.latest import latest_rows
 from carrylab.evidence.many import adjust
 from carrylab.evidence.others import other_rows
@@ -95,6 +95,7 @@ def run(study: Study, *, audit: bool = False, progress: Progress | None = None) 
     rows = [row for one, done in zip(built, fitted, strict=True) for row in (*_accounts(one), *done.rows)]
     cases = [case for done in fitted for case in done.cases]
     rows += _across([fit for case in cases for fit in case.fits])
+    rows += study_joint_rows([case.pooled for case in cases], study.markets[0].inference.joint)
     require_found(study.questions.states, cases)
     rows += asked.study_rows(cases, study.questions)
     timings["estimate"] = time.perf_counter() - clock
@@ -244,7 +245,7 @@ def estimate(built: Built, economies: Mapping[str, str], questions: Questions | 
         rows += [
             row for one in family for row in (*share_rows(one, drawn=other), *summary_rows(one, said), *other_rows(one))
         ]
-        rows += group_rows(family[1:])
+        rows += group_rows(family[1:], built.market.inference.joint)
         rows += regression_ledger_rows(family[0])
         rows += latest_rows(family[0], case.terms)
         rows += _other_rho(parity, built, economies)

@@ -143,7 +143,13 @@ def _load(path: Path) -> tuple[dict[str, Any], str]:
 
 
 def _inference(raw: Any, problems: Problems) -> dict[str, Any]:
-    readers = {**INFERENCE, "confidence": number(0, 1), "draws": draws, "seed": whole(0)}
+    readers = {
+        **INFERENCE,
+        "confidence": number(0, 1),
+        "draws": draws,
+        "joint": choice(get_args(options.Joint)),
+        "seed": whole(0),
+    }
     return read_table(raw, readers, "[inference]", problems)
 
 

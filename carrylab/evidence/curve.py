@@ -11,8 +11,8 @@ import numpy as np
 from carrylab.data.calendar import Tenor, parse_tenor
 from carrylab.errors import InferenceError, SampleError
 from carrylab.evidence.case import Case, Curve
-from carrylab.evidence.joint import fallback_cosines
 from carrylab.evidence.setting import Fit, Row, tested
+from carrylab.evidence.stack import fallback_cosines
 from carrylab.options import Questions
 from carrylab.regression.fit import Estimate, fit
 from carrylab.regression.longrun import longrun

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
@@ -13,15 +13,19 @@ from carrylab.evidence.setting import EFFECTS, Fit, Row
 from carrylab.markets.parity import Leg
 from carrylab.regression.draws import Case, Draws, draw
 from carrylab.regression.draws_measure import Question
-from carrylab.regression.draws_tests import band, bias_corrected, equal_tailed, rarity, stepdown, upper_band
+from carrylab.regression.draws_tests import band, bias_corrected, equal_tailed, joint, rarity, stepdown, upper_band
 from carrylab.regression.sample import Floats, Ints
 
 WORKERS = 2
+BY_DRAWS = "all premium shares zero, by draws"
 
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Drawn:
-    """What the draws say of every hypothesis, all arrays (H,) or (2, H); `words` says how they were made."""
+    """What the draws say of every hypothesis, all arrays (H,) or (2, H); `words` says how they were made.
+
+    `rare`: how far out data (H,) and draws (B, H) lie, on one scale for all hypotheses.
+    """
 
     p_value: Floats
     slope: Floats
@@ -30,6 +34,7 @@ class Drawn:
     r2_band: Floats
     statistic: Floats
     words: str
+    rare: tuple[Floats, Floats]
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -78,7 +83,34 @@ def names_of(families: Sequence[Sequence[Fit]]) -> frozenset[str]:
 def rows_of(families: Sequence[Sequence[Fit]], said: Drawn) -> list[Row]:
     """Rows of every fit of the families, in the order of the hypotheses that were drawn."""
     fits = [fit for family in families for fit in family]
-    return [row for h, fit in enumerate(fits) for row in _rows(fit, said, h)]
+    return [row for h, fit in enumerate(fits) for row in _rows(fit, said, h)] + list(_joint(families, said))
+
+
+def _joint(families: Sequence[Sequence[Fit]], said: Drawn) -> Iterator[Row]:
+    """No premium in any group of a family, at any horizon of a parity, and anywhere in the market: one p each."""
+    starts = np.cumsum([0, *(len(family) for family in families)])
+    market = families[0][0].place()["market"]
+    place = {"section": "joint", "rank": "headline", "sample": "all", "market": market, "term": BY_DRAWS}
+    for start, family in zip(starts, families, strict=False):
+        kept = {name: family[0].place()[name] for name in ("parity", "horizon", "interval")}
+        yield from _joint_row(place | kept | {"group": "all groups"}, range(start + 1, start + len(family)), said)
+    pooled: dict[str, list[int]] = {}
+    for start, family in zip(starts, families, strict=False):
+        pooled.setdefault(family[0].parity.name, []).append(int(start))
+    for parity, chosen in pooled.items():
+        yield from _joint_row(place | {"parity": parity, "group": "all horizons"}, chosen, said)
+    yield from _joint_row(place | {"group": "all of the market"}, range(int(starts[-1])), said)
+
+
+def _joint_row(place: Row, chosen: Sequence[int], said: Drawn) -> Iterator[Row]:
+    if len(chosen) > 1:
+        data, draws = said.rare
+        p_value = joint(data[list(chosen)], draws[:, list(chosen)])
+        yield place | {
+            "estimate": float(len(chosen)),
+            "p_value": p_value,
+            "method": f"draws: the rarest of them, {said.words}",
+        }
 
 
 def _case(family: Sequence[Fit]) -> Case:
@@ -109,14 +141,16 @@ def summed_up(
     slopes: tuple[Floats, Floats, Floats], t: tuple[Floats, Floats], r2: Floats, confidence: float, words: str
 ) -> Drawn:
     """What draws say: `slopes` on the data (H,), on the draws (B, H) and under the null (H,); `t` on data and draws."""
+    rare = rarity(*t)
     return Drawn(
         p_value=equal_tailed(*t),
         slope=bias_corrected(*slopes),
-        adjusted=stepdown(*rarity(*t)),
+        adjusted=stepdown(*rare),
         slope_band=band(slopes[1], confidence),
         r2_band=upper_band(r2),
         statistic=t[0],
         words=words,
+        rare=rare,
     )
 
 

@@ -11,9 +11,9 @@ import numpy as np
 from carrylab.data.calendar import Interval, Tenor, parse_tenor, steps_in
 from carrylab.errors import InferenceError, SampleError
 from carrylab.evidence.case import Case, weighted
-from carrylab.evidence.joint import fallback_cosines
 from carrylab.evidence.setting import Fit, Row, tested
 from carrylab.evidence.shares import share_rows
+from carrylab.evidence.stack import fallback_cosines
 from carrylab.options import Profile, Questions
 from carrylab.regression.cumulated import cumulated
 from carrylab.regression.longrun import cosine_count

@@ -1,81 +1,83 @@
-"""Joint hypotheses on the groups of one parity: every premium share zero, and all of them equal."""
+"""Joint hypotheses on premium shares: over groups, horizons, markets, and over everything a study estimates."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
-import numpy as np
-
-from carrylab.errors import InferenceError
 from carrylab.evidence.setting import Fit, Row
-from carrylab.regression.longrun import cosine_count
-from carrylab.regression.one_period import null_influence
-from carrylab.regression.sample import Floats
-from carrylab.regression.wald import Restrictions, Wald, restrictions, wald
+from carrylab.evidence.stack import EQUAL, ZERO, Stack, distinct, equal, joint_row, stack, zero
 
-ALL_ZERO, ALL_EQUAL = "all premium shares zero", "all premium shares equal"
+GROUPS, HORIZONS, MARKETS, EVERYTHING = "all groups", "all horizons", "all markets", "everything"
 
 
-def group_rows(fits: Sequence[Fit]) -> list[Row]:
-    """Rows of section `joint` for the groups of one parity and horizon; none where there are fewer than two.
-
-    Zero: one-period errors stacked (Hodrick 1992, 1B) where every group has them. Otherwise, and for equality, which
-    is no null of 1B, cosines with F and at most half as many as there are independent windows.
-    """
-    if len(fits) < 2 or any(fit.leg_of("return") is None or not fit.has_identity for fit in fits):
+def group_rows(fits: Sequence[Fit], kind: str = "auto") -> list[Row]:
+    """Rows of section `joint` for the groups of one parity and horizon: every share zero, and all of them equal."""
+    if len(fits) < 2 or not all(map(_has_share, fits)):
         return []
-    legs = [fit.leg_of("return") or 0 for fit in fits]
-    weights = np.array([fit.weights[leg] for fit, leg in zip(fits, legs, strict=True)])
-    values = weights * np.array([fit.estimate.coefficients[0, leg] for fit, leg in zip(fits, legs, strict=True)])
-    names = [f"{fit.group} = 0" for fit in fits]
-    zero = restrictions(names, np.eye(len(fits)))
-    pairs = np.hstack([np.ones((len(fits) - 1, 1)), -np.eye(len(fits) - 1)])
-    equal = restrictions([f"{fits[0].group} = {fit.group}" for fit in fits[1:]], pairs)
-    if all(fit.headline.kinds[leg] == "one-period" for fit, leg in zip(fits, legs, strict=True)):
-        columns = [
-            null_influence(fit.sample, fit.estimate, leg).series[:, 0] for fit, leg in zip(fits, legs, strict=True)
-        ]
-        first = _row(fits, ALL_ZERO, np.stack(columns, axis=1) * weights, values, (zero, "date"))
-    else:
-        first = _row(fits, ALL_ZERO, _influence(fits, legs) * weights, values, (zero, "cosine"))
-    return [first, _row(fits, ALL_EQUAL, _influence(fits, legs) * weights, values, (equal, "cosine"))]
-
-
-def _influence(fits: Sequence[Fit], legs: Sequence[int]) -> Floats:
-    return np.stack([fit.estimate.influence[:, 0, leg] for fit, leg in zip(fits, legs, strict=True)], axis=1)
-
-
-def _row(fits: Sequence[Fit], term: str, series: Floats, values: Floats, test: tuple[Restrictions, str]) -> Row:
-    hypothesis, kind = test
     place = fits[0].place()
     kept = {name: place[name] for name in ("market", "parity", "horizon", "interval")}
-    row = kept | {"section": "joint", "group": "all groups", "sample": "all", "term": term}
-    overlap = max(fit.sample.overlap for fit in fits)
-    try:
-        found = wald(series, values, hypothesis, kind=kind, lags=overlap, cosines=_cosines(series, overlap, kind))
-    except InferenceError as refused:
-        return row | {"note": str(refused)}
-    return row | {
-        "statistic": found.statistic,
-        "df": found.df_denominator,
-        "p_value": found.p_value,
-        "lags": found.cosines,
-        "method": _method(found, overlap),
-        "note": f"redundant: {', '.join(found.dropped)}" if found.dropped else "",
-    }
+    return _both(stack(fits, [fit.group for fit in fits]), kind, kept | {"group": GROUPS})
 
 
-def _cosines(series: Floats, overlap: int, kind: str) -> int | None:
-    return fallback_cosines(series, overlap) if kind == "cosine" else None
+def study_joint_rows(fits: Sequence[Fit], kind: str = "auto") -> list[Row]:
+    """Rows of section `joint` for pooled fits: over the horizons of a parity, over markets, over everything.
+
+    Fits of one interval are held together; those that say the same as another are left out and named.
+    """
+    pooled = [fit for fit in fits if fit.group == "pooled" and _has_share(fit)]
+    rows = [row for own in _by(pooled, "market", "parity") for row in _over_horizons(own, kind)]
+    for alike in _by(pooled, "interval", "horizon"):
+        rows += _over_markets(alike, kind) + _everything(alike, kind)
+    return rows
 
 
-def fallback_cosines(series: Floats, overlap: int) -> int:
-    """At most half as many cosines as there are independent windows on dates that any of the series (T, m) uses."""
-    n = int((series != 0).any(axis=1).sum())
-    return max(2, min(cosine_count(n, overlap), n // (2 * (overlap + 1))))
+def _has_share(fit: Fit) -> bool:
+    return fit.leg_of("return") is not None and fit.has_identity
 
 
-def _method(found: Wald, overlap: int) -> str:
-    if found.kind == "cosine":
-        return f"{found.law} from {found.cosines} equal-weighted cosines, overlap {overlap}"
-    return f"{found.law} from stacked one-period errors (Hodrick 1B), overlap {overlap}"
+def _everything(fits: Sequence[Fit], kind: str) -> list[Row]:
+    """Every parity of every market at one horizon, each fact once; none where that is a single one or the markets'."""
+    whole = distinct(stack(fits, [f"{fit.parity.market} {fit.parity.name}" for fit in fits]))
+    if len(whole.names) < 2 or len(fits) == len({fit.parity.market for fit in fits}):
+        return []
+    place = {name: fits[0].place()[name] for name in ("horizon", "interval")}
+    return [place | {"group": EVERYTHING, "sample": "all"} | _zero(whole, kind)]
+
+
+def _by(fits: Sequence[Fit], *keys: str) -> list[list[Fit]]:
+    """Fits that share some columns of their place, in the order of the first."""
+    found: dict[tuple[object, ...], list[Fit]] = {}
+    for fit in fits:
+        found.setdefault(tuple(fit.place()[key] for key in keys), []).append(fit)
+    return list(found.values())
+
+
+def _zero(of: Stack, kind: str) -> Row:
+    return joint_row(of, zero(of), kind, ZERO)
+
+
+def _both(of: Stack, kind: str, place: Row) -> list[Row]:
+    place |= {"sample": "all"}
+    return [place | _zero(of, kind), place | joint_row(of, equal(of), kind, EQUAL)]
+
+
+def _over_horizons(fits: Sequence[Fit], kind: str) -> list[Row]:
+    """One parity at its horizons; where the maturity sets the horizon, that is over maturities."""
+    if len(fits) < 2:
+        return []
+    place = {name: fits[0].place()[name] for name in ("market", "parity", "interval")}
+    place |= {"group": HORIZONS, "sample": "all"}
+    whole = stack(fits, [str(fit.parity.horizon) for fit in fits])
+    # What a ratio pays grows with the horizon as less of it is carried over, so its shares cannot be equal.
+    carried = fits[0].leg_of("carried over") is not None
+    return [place | _zero(whole, kind)] if carried else _both(whole, kind, place)
+
+
+def _over_markets(fits: Sequence[Fit], kind: str) -> list[Row]:
+    """Every market's first parity at one horizon."""
+    first = list({fit.parity.market: fit for fit in reversed(fits)}.values())[::-1]
+    if len(first) < 2:
+        return []
+    place = {name: first[0].place()[name] for name in ("horizon", "interval")}
+    place |= {"parity": "each market's own spread", "group": MARKETS, "sample": "all"}
+    return [place | _zero(stack(first, [fit.parity.market for fit in first]), kind)]

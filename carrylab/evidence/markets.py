@@ -10,8 +10,8 @@ import numpy as np
 
 from carrylab.errors import InferenceError, SampleError
 from carrylab.evidence.case import Case
-from carrylab.evidence.joint import fallback_cosines
 from carrylab.evidence.setting import Fit, Row, judged, tested
+from carrylab.evidence.stack import fallback_cosines
 from carrylab.options import Questions
 from carrylab.regression.covariance import ErrorOptions, Errors, standard_errors
 from carrylab.regression.fit import Estimate, fit

@@ -10,8 +10,8 @@ import numpy as np
 
 from carrylab.errors import InferenceError, SampleError
 from carrylab.evidence.case import Case
-from carrylab.evidence.joint import fallback_cosines
 from carrylab.evidence.setting import Fit, Row, tested
+from carrylab.evidence.stack import fallback_cosines
 from carrylab.options import Questions
 from carrylab.regression.longrun import longrun
 from carrylab.regression.parts import PARTS, Parts, parts

@@ -12,6 +12,7 @@ from carrylab.report.answer import answer_lines
 from carrylab.report.curve import curve_tables
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
 from carrylab.report.horizons import horizon_tables
+from carrylab.report.joint import joint_tables
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
 from carrylab.report.slope_parts import part_tables
 from carrylab.report.states import state_tables
@@ -87,6 +88,7 @@ SECTIONS: tuple[Section, ...] = (
     Section("Side by side", _own_spreads),
     Section("Carry, the same signal in every market", _carry),
     Section(DETAIL, detail_tables),
+    Section("Joint tests", joint_tables),
     Section("Newest signals", _latest),
     *EVIDENCE,
     Section("Load checks", check_lines),

@@ -62,7 +62,8 @@ def test_the_statistic_is_the_headline_t(tmp_path: Path) -> None:
 
 def paid(found: pd.DataFrame) -> pd.DataFrame:
     keep = (found["term"] == "nothing paid") & (found["group"] == "pooled") & (found["section"] == "shares")
-    return found[keep & (found["parity"] == found["parity"].iloc[-1])].drop_duplicates("rank").set_index("rank")
+    rows = found[keep]
+    return rows[rows["parity"] == rows["parity"].iloc[-1]].set_index("rank")
 
 
 def test_a_series_whose_slope_is_biased_is_drawn_without_being_asked(tmp_path: Path) -> None:
