@@ -2,10 +2,12 @@
 
 import sys
 
+from browser import prepare_browser
 from environment import prepare, run
 
 if __name__ == "__main__":
     python = prepare("test")
+    prepare_browser(python)
     run([python, "-m", "ruff", "check", "."])
     run([python, "-m", "ruff", "format", "--check", "."])
     run([python, "-m", "mypy"])

@@ -26,8 +26,8 @@ DRAWINGS: tuple[Drawing, ...] = (
     Drawing(
         "horizons",
         "How do the shares change with the horizon?",
-        "The share of each leg at each horizon with its interval; dashed, where it would lie if expected returns were "
-        "constant.",
+        "The share of each leg at each horizon with its own interval and, shaded, the band that holds at all horizons "
+        "at once where the study asks for it; dashed, where it would lie if expected returns were constant.",
         horizon_panels,
     ),
     Drawing(

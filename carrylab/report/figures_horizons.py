@@ -25,6 +25,7 @@ if TYPE_CHECKING:
 
 Floats = npt.NDArray[np.float64]
 HEIGHT = 280.0
+BAND = "signal, all horizons at once"
 FEW = 8  # horizons up to which each has an interval of its own
 
 
@@ -43,11 +44,11 @@ class Profile:
 def horizon_panels(findings: pd.DataFrame, _pictures: Sequence[Picture]) -> Iterator[Panel]:
     """One panel for each market that has two horizons or more of its own spread."""
     for number, column in enumerate(columns_of(findings), 1):
-        rows = _rows(findings, column.market, column.parity)
+        rows = rows_of(findings, column.market, column.parity)
         names = sorted(rows["horizon"].unique(), key=lambda name: parse_tenor(name).years)
         if len(names) < 2:
             continue
-        profiles = [found for role in ROLE_NAMES if (found := _profile(rows, role)) is not None]
+        profiles = [found for role in ROLE_NAMES if (found := profile_of(rows, role)) is not None]
         if profiles:
             spans = f"{rows['first'].min()} to {rows['last'].max()}"
             yield Panel(
@@ -61,32 +62,44 @@ def horizon_panels(findings: pd.DataFrame, _pictures: Sequence[Picture]) -> Iter
             )
 
 
-def _rows(findings: pd.DataFrame, market: str, parity: str) -> pd.DataFrame:
+def rows_of(findings: pd.DataFrame, market: str, parity: str) -> pd.DataFrame:
     """Pooled slopes on the signal by horizon: the profile where it was asked for, else the horizons of the study."""
     own = findings[(findings["market"] == market) & (findings["parity"] == parity) & (findings["group"] == "pooled")]
-    own = own[own["term"].isin(["signal", "all paid"]) & (own["sample"] == "all") & (own["rank"] != "second opinion")]
+    own = own[own["term"].isin(["signal", "all paid", BAND]) & (own["sample"] == "all")]
     asked = own[own["section"] == "horizons"]
-    return asked if len(asked) else own[own["section"] == "shares"]
+    if len(asked["horizon"].unique()) > 1:
+        return asked
+    return own[(own["section"] == "shares") & (own["rank"] == "headline")]
 
 
-def _profile(rows: pd.DataFrame, role: str) -> Profile | None:
+def profile_of(rows: pd.DataFrame, role: str) -> Profile | None:
     """Shares of one role at each horizon; several fundamental legs are taken together, with no null of their own."""
     own = rows[(rows["role"] == role) & (rows["term"] == "signal") & rows["weight"].notna()]
     if len(own["leg"].unique()) > 1:
         own = rows[rows["term"] == "all paid"].assign(weight=1.0, null=math.nan) if role == "fundamental" else own[:0]
     if own.empty:
         return None
-    own = own.assign(years=[parse_tenor(name).years for name in own["horizon"]]).sort_values("years")
-    weight = own["weight"].to_numpy()
-    ends = np.sort(np.stack([weight * own["lower"], weight * own["upper"]]), axis=0)
+    weight = float(own["weight"].iloc[0])
+    own = _by_years(own)
+    band = _by_years(rows[(rows["role"] == role) & (rows["term"] == BAND)])
     return Profile(
         role=role,
         years=own["years"].to_numpy(),
         share=weight * own["estimate"].to_numpy(),
-        pointwise=ends,
-        uniform=None,
-        null=float(weight[0] * own["null"].iloc[0]),
+        pointwise=_ends(own, weight),
+        uniform=_ends(band, weight) if len(band) == len(own) else None,
+        null=weight * float(own["null"].iloc[0]),
     )
+
+
+def _by_years(rows: pd.DataFrame) -> pd.DataFrame:
+    return rows.assign(years=[parse_tenor(name).years for name in rows["horizon"]]).sort_values("years")
+
+
+def _ends(rows: pd.DataFrame, weight: float) -> Floats:
+    """Lower and upper end (2, H) of the share: a weight below zero turns an interval round."""
+    ends: Floats = np.sort(weight * rows[["lower", "upper"]].to_numpy().T, axis=0)
+    return ends
 
 
 def _said(profiles: list[Profile], names: list[str]) -> str:

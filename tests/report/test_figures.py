@@ -26,6 +26,7 @@ from carrylab.findings import to_frame
 from carrylab.report.figure import WIDTH, Figure, Panel
 from carrylab.report.figures import figures_of
 from carrylab.report.figures_files import PNG_DPI, figure_files, inline_svg
+from carrylab.report.figures_horizons import BAND, profile_of, rows_of
 from carrylab.report.figures_shares import shares_of
 from carrylab.report.looks import LIGHT
 from carrylab.report.side_by_side import columns_of
@@ -95,6 +96,25 @@ def test_horizons_of_a_study_make_a_profile() -> None:
     (panel,) = profile.panels
     assert panel.finding.startswith("Share of the spread by horizon: paid 1.62 at 1m and 1.62 at 5y; comes true -0.62")
     assert "var(--paid)" in inline_svg(panel)
+
+
+def test_the_profile_asked_for_has_a_band_that_holds_at_all_horizons() -> None:
+    """Ten horizons with a band one wider on either side than their own interval, turned round by the weight of -1."""
+    rows = []
+    for months in range(1, 11):
+        for row in factory.column(Place("FX", "uncovered-interest", horizon=f"{months}m"), CURRENCIES):
+            if row["term"] == "signal" and row["section"] == "shares" and row["rank"] == "headline":
+                asked = row | {"section": "horizons", "rank": "", "lower": 0.1, "upper": 0.5}
+                rows += [row, asked, asked | {"term": BAND, "lower": -0.9, "upper": 1.5}]
+    findings = to_frame(rows)
+    true = profile_of(rows_of(findings, "FX", "uncovered-interest"), "fundamental")
+    assert true is not None
+    assert true.uniform is not None
+    np.testing.assert_allclose(true.pointwise[:, 0], [-0.5, -0.1])
+    np.testing.assert_allclose(true.uniform[:, 0], [-1.5, 0.9])
+    np.testing.assert_allclose(true.years, np.arange(1, 11) / 12)
+    (panel,) = next(figure for figure in figures_of(findings, []) if figure.name == "horizons").panels
+    assert inline_svg(panel).count("fill: var(--paid)") == 2  # the band of all horizons, and that of each
 
 
 def test_the_line_of_the_points_is_the_slope_of_the_table(bonds: carrylab.Results, panels: dict[str, Panel]) -> None:

@@ -13,6 +13,7 @@ import pandas as pd
 import pytest
 import worlds
 from factory import BONDS, Place
+from pages import HOSTILE, RECIPE, demo_page
 
 import carrylab
 from carrylab.findings import to_frame
@@ -23,14 +24,6 @@ from carrylab.report.sections import Section
 from carrylab.report.table import Line, Table, number_cell
 
 VOID = {"meta", "br", "link", "img", "input", "hr"}
-RECIPE = Recipe(
-    study='title = "T"\n', command="carrylab run s.toml", versions={"numpy": "2"}, hashes={"a.csv": "0" * 64}, seeds={}
-)
-HOSTILE = (
-    '</title><script>alert(1)</script>"onmouseover=x',
-    "<img src=x onerror=alert(1)> & {{ 7*7 }}",
-    "';]]>--><svg onload=alert(1)> $x^2$ \\alpha",
-)
 
 
 class Page(HTMLParser):
@@ -206,3 +199,7 @@ def test_the_text_report_needs_neither_plots_nor_templates(tmp_path: Path) -> No
     done = subprocess.run(command, capture_output=True, text=True, check=True)
     assert done.stdout.strip() == "[False, False]"
     assert not (tmp_path / "out" / "report.html").exists()
+
+
+def test_the_demo_page_is_below_two_megabytes() -> None:
+    assert len(demo_page().encode()) < 2e6
