@@ -6,6 +6,7 @@ from collections.abc import Callable, Sequence
 
 from carrylab.evidence.case import Case
 from carrylab.evidence.curve import curve_rows
+from carrylab.evidence.forecast import forecast_rows
 from carrylab.evidence.horizons import horizon_rows
 from carrylab.evidence.markets import across_market_rows
 from carrylab.evidence.parts import part_rows
@@ -20,6 +21,7 @@ OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (
     state_rows,
     survey_rows,
     curve_rows,
+    forecast_rows,
 )
 OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = (horizon_rows, across_market_rows)
 

@@ -11,6 +11,7 @@ from carrylab.report.across import across_tables
 from carrylab.report.answer import answer_lines
 from carrylab.report.curve import curve_tables
 from carrylab.report.detail import check_lines, detail_tables, identity_lines, latest_table, ledger_table
+from carrylab.report.forecast import forecast_tables
 from carrylab.report.horizons import horizon_tables
 from carrylab.report.joint import joint_tables
 from carrylab.report.side_by_side import columns_of, comparison_table, side_by_side
@@ -82,6 +83,7 @@ EVIDENCE: tuple[Section, ...] = (
     Section("The rest of the curve", curve_tables),
     Section("Surveys", survey_tables),
     Section("Across markets", across_tables),
+    Section("Out of sample", forecast_tables),
 )
 SECTIONS: tuple[Section, ...] = (
     Section(ANSWER, answer_lines),
