@@ -73,7 +73,7 @@ def _line(label: str, records: list[Record]) -> Line:
 def _restricted(rows: pd.DataFrame) -> Iterator[str]:
     for row in rows[rows["term"].str.endswith("sign restricted")].to_dict("records"):
         yield (
-            f"{row['sample'].capitalize()}, with no falling slope and no premium below zero (Campbell and Thompson 2008): "
+            f"{row['sample'].capitalize()}, no falling slope and no premium below zero (Campbell and Thompson 2008): "
             f"R2 {fixed(100 * row['estimate'], 1)} percent against the historical mean."
         )
 
