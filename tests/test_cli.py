@@ -51,6 +51,17 @@ def test_run_prints_the_report_and_writes_the_folder(study: Path, tmp_path: Path
     pd.testing.assert_frame_equal(again, pd.read_parquet(tmp_path / "out" / "findings.parquet"), check_dtype=False)
 
 
+def test_figures_are_written_as_files_on_request(study: Path, tmp_path: Path) -> None:
+    found = call("run", study, "--into", tmp_path / "out", "--figures", "svg", "--figures", "png")
+    assert found.exit_code == 0, found.output
+    names = {entry.name for entry in (tmp_path / "out" / "figures").iterdir()}
+    assert {"shares.svg", "shares.png", "path-1.svg", "points-1-return.png"} <= names
+    assert (tmp_path / "out" / "report.html").read_text(encoding="utf-8").startswith("<!doctype html>")
+    assert "'gif' is not one of 'svg', 'pdf', 'png'" in refused(call("run", study, "--figures", "gif"))
+    assert call("run", study, "--into", tmp_path / "out").exit_code == 0
+    assert not (tmp_path / "out" / "figures").exists()
+
+
 def test_run_replaces_its_own_folder_and_no_other(study: Path, tmp_path: Path) -> None:
     assert call("run", study, "--into", tmp_path / "out").exit_code == 0
     assert call("run", study, "--into", tmp_path / "out").exit_code == 0

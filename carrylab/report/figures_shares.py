@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from carrylab.evidence.pictures import Picture
 
 NULL = "where expected returns are constant"
-ROW, LABELS, VALUES = 21.0, 112.0, 106.0  # points: a row's height, room for names and for numbers
+ROW, LABELS, VALUES = 21.0, 112.0, 110.0  # points: a row's height, room for names and for numbers
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -140,7 +140,7 @@ def _words(ax: Axes, text: str, place: tuple[float, str, str], *, weight: str = 
         va="center",
         color=LIGHT[colour],
         fontweight=weight,
-        fontsize=9 if side == "right" else 11,
+        fontsize=9.5 if side == "right" else 11,
         annotation_clip=False,
     )
 
@@ -150,4 +150,4 @@ def _key(ax: Axes) -> None:
     ax.plot([], [], "|", color=LIGHT["ink"], markersize=11, markeredgewidth=1.6, label=NULL)
     ax.plot([], [], "o", color=LIGHT["soft"], markerfacecolor=LIGHT["paper"], markersize=7, label="not seen at 5%")
     corner = ax.figure.transFigure
-    ax.legend(loc="lower left", bbox_to_anchor=(0, 0), bbox_transform=corner, ncols=2, borderaxespad=0, fontsize=9)
+    ax.legend(loc="lower left", bbox_to_anchor=(0, 0), bbox_transform=corner, ncols=2, borderaxespad=0, fontsize=9.5)
