@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import datetime
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+import numpy as np
 import pandas as pd
 
 if TYPE_CHECKING:
@@ -58,6 +60,20 @@ def axes_in(canvas: Canvas, box: tuple[float, float, float, float]) -> Axes:
     left, bottom, right, top = box
     place = (left / width, bottom / height, (width - left - right) / width, (height - bottom - top) / height)
     return canvas.add_axes(place)
+
+
+def day_of(label: str) -> np.datetime64:
+    """First day of a period by its name in the findings.
+
+    >>> [str(day_of(label)) for label in ("2024", "2024-Q2", "2024-03", "2024-W01", "2024-01-31")]
+    ['2024-01-01', '2024-04-01', '2024-03-01', '2024-01-01', '2024-01-31']
+    """
+    year, _, rest = label.partition("-")
+    if rest.startswith("Q"):
+        return np.datetime64(f"{year}-{3 * int(rest[1:]) - 2:02d}", "D")
+    if rest.startswith("W"):
+        return np.datetime64(datetime.date.fromisocalendar(int(year), int(rest[1:]), 1), "D")
+    return np.datetime64(label, "D")
 
 
 def source_of(findings: pd.DataFrame, market: str) -> str:

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import pandas as pd
 
 from carrylab.report.figure import Drawing, Figure
+from carrylab.report.figures_forecast import forecast_panels
 from carrylab.report.figures_horizons import horizon_panels
 from carrylab.report.figures_paths import path_panels
 from carrylab.report.figures_points import point_panels
@@ -43,6 +44,13 @@ DRAWINGS: tuple[Drawing, ...] = (
         "Each dot is one entity at one date. The line through the dots is the slope of the table; the dashed one is "
         "where it would lie if expected returns were constant.",
         point_panels,
+    ),
+    Drawing(
+        "forecast",
+        "Would it have worked?",
+        "Squared errors of the mean of the past less those of the spread's forecast, summed up to each date. The line "
+        "rises where the spread forecast better, and ends above zero if it did so on the whole.",
+        forecast_panels,
     ),
 )
 

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
 
 NULL = "where expected returns are constant"
 ROW, LABELS, VALUES = 21.0, 112.0, 110.0  # points: a row's height, room for names and for numbers
+BELOW = 56.0
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -90,7 +91,7 @@ def _said(shares: list[Share]) -> str:
 
 
 def _draw(canvas: Canvas, markets: dict[str, list[Share]]) -> None:
-    ax = axes_in(canvas, (LABELS, 56, VALUES, 4))
+    ax = axes_in(canvas, (LABELS, BELOW, VALUES, 4))
     count = sum(len(shares) + 1 for shares in markets.values())
     ax.set_ylim(count - 0.2, -0.6)
     for at in (0.0, 1.0):
@@ -149,5 +150,6 @@ def _key(ax: Axes) -> None:
     """What the marks mean, below everything."""
     ax.plot([], [], "|", color=LIGHT["ink"], markersize=11, markeredgewidth=1.6, label=NULL)
     ax.plot([], [], "o", color=LIGHT["soft"], markerfacecolor=LIGHT["paper"], markersize=7, label="not seen at 5%")
-    corner = ax.figure.transFigure
-    ax.legend(loc="lower left", bbox_to_anchor=(0, 0), bbox_transform=corner, ncols=2, borderaxespad=0, fontsize=9.5)
+    width, height = (side * 72 / ax.figure.dpi for side in ax.bbox.size)
+    corner = (-LABELS / width, -BELOW / height)
+    ax.legend(loc="lower left", bbox_to_anchor=corner, ncols=2, borderaxespad=0, fontsize=9.5)

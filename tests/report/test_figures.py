@@ -117,6 +117,21 @@ def test_the_profile_asked_for_has_a_band_that_holds_at_all_horizons() -> None:
     assert inline_svg(panel).count("fill: var(--paid)") == 2  # the band of all horizons, and that of each
 
 
+def test_the_running_difference_says_who_was_better_in_the_end(tmp_path: Path) -> None:
+    """Its numbers are those of the findings, and so is the sign of the last."""
+    study = worlds.BONDS + '\n[evidence]\nforecast = { first = "5y", rolling = "5y" }\n'
+    results = carrylab.run(carrylab.read_study(worlds.write(tmp_path, study, **worlds.bonds())))
+    (panel,) = next(figure for figure in results.figures() if figure.name == "forecast").panels
+    rows = results.findings
+    rows = rows[(rows["section"] == "forecast") & (rows["parity"] == "forward-spot") & (rows["role"] == "return")]
+    for scheme, own in rows.groupby("sample"):
+        r2 = own.loc[(own["term"] == "R2 against the historical mean") & (own["group"] == "pooled"), "estimate"].iloc[0]
+        last = own.loc[own["term"].str.startswith("running difference"), "estimate"].iloc[-1]
+        better = "the spread" if last > 0 else "the mean"
+        assert f"{scheme} {r2:.3f}, {better} better in the end" in panel.finding
+    assert "origins 2005-01 to 2008-12" in panel.source
+
+
 def test_the_line_of_the_points_is_the_slope_of_the_table(bonds: carrylab.Results, panels: dict[str, Panel]) -> None:
     rows = bonds.findings
     rows = rows[(rows["section"] == "shares") & (rows["group"] == "pooled") & (rows["term"] == "signal")]
