@@ -9,7 +9,7 @@ import pandas as pd
 
 @dataclass(frozen=True, slots=True)
 class Method:
-    """A method: a word that findings use where it was at work (none: always), what it is, and its source."""
+    """A method: a word, or a column, that findings use where it was at work (none: always); what it is; its source."""
 
     word: str
     what: str
@@ -124,6 +124,47 @@ METHODS: tuple[Method, ...] = (
         "Interval of a ratio by inverting a linear restriction.",
         "Fieller (1954), Journal of the Royal Statistical Society B 16, 175-185.",
     ),
+    Method(
+        "sup-t",
+        "One band that holds at all horizons at once.",
+        "Montiel Olea and Plagborg-Moller (2019), Journal of Applied Econometrics 34, 1-17.",
+    ),
+    Method(
+        "share of variance",
+        "Static, dynamic and common parts of the slope.",
+        "Hassan and Mano (2019), Quarterly Journal of Economics 134, 397-450, for currencies; here in every market.",
+    ),
+    Method(
+        "surveys",
+        "A survey splits what is paid into a required premium and a forecast error.",
+        "Froot and Frankel (1989), Quarterly Journal of Economics 104, 139-161.",
+    ),
+    Method(
+        "single index",
+        "One combination of predictors for all maturities.",
+        "Cochrane and Piazzesi (2005), American Economic Review 95, 138-160.",
+    ),
+    Method(
+        "Clark-West",
+        "Test of nested forecasts that allows for the noise of the larger model.",
+        "Clark and West (2007), Journal of Econometrics 138, 291-311.",
+    ),
+    Method(
+        "encompassing",
+        "Weight of a forecast when two are combined.",
+        "Harvey, Leybourne and Newbold (1998), Journal of Business and Economic Statistics 16, 254-259.",
+    ),
+    Method(
+        "sign restricted",
+        "Forecasts restricted to the sign that theory gives.",
+        "Campbell and Thompson (2008), Review of Financial Studies 21, 1509-1531.",
+    ),
+    Method(
+        "p_holm",
+        "p-values adjusted for the number of tests.",
+        "Holm (1979), Scandinavian Journal of Statistics 6, 65-70; Benjamini and Hochberg (1995), Journal of the Royal "
+        "Statistical Society B 57, 289-300.",
+    ),
 )
 WHERE = ("section", "parity", "term", "method", "note")
 
@@ -131,4 +172,5 @@ WHERE = ("section", "parity", "term", "method", "note")
 def methods_used(findings: pd.DataFrame) -> list[Method]:
     """The methods whose words stand in the findings, in the order of the list."""
     texts = {str(text) for column in WHERE for text in findings[column].unique()}
+    texts |= {name for name in findings.columns if findings[name].notna().any()}
     return [method for method in METHODS if any(method.word in text for text in texts)]

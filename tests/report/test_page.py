@@ -17,6 +17,7 @@ from pages import HOSTILE, RECIPE, demo_page
 
 import carrylab
 from carrylab.findings import to_frame
+from carrylab.regression.covariance import ERRORS
 from carrylab.report import sections
 from carrylab.report.page import Recipe, report_page, slug
 from carrylab.report.references import METHODS, methods_used
@@ -181,6 +182,13 @@ def test_methods_are_those_whose_words_the_findings_use() -> None:
     assert {"", "forward-spot", "uncovered-interest", "dividend-price", "carry", "equal-weighted cosines"} <= words
     assert not {"yield-spread", "fixed-b", "clustered", "stepdown"} & words
     assert all(re.search(r"\(\d{4}\)", method.source) for method in METHODS)
+
+
+def test_every_kind_of_error_is_named_with_its_source() -> None:
+    """Textbook errors apart, which need none."""
+    for name, kind in ERRORS.items():
+        rows = [{"section": "shares", "term": "signal", "method": f"no effects; {kind.words}"}]
+        assert len(methods_used(to_frame(rows))) > 1 or name == "classical", name
 
 
 def test_a_study_without_slopes_still_makes_a_page() -> None:
