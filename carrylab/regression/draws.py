@@ -21,7 +21,7 @@ from carrylab.regression.draws_measure import (
     measure,
     one_step_of,
 )
-from carrylab.regression.draws_null import Null, dated_shocks, fit_null, pooled_shocks, shock_pool
+from carrylab.regression.draws_null import Fed, Null, dated_shocks, fit_null, pooled_shocks, shock_pool
 from carrylab.regression.sample import Floats, Ints, take
 
 Picks = Floats | Ints
@@ -109,9 +109,10 @@ def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resa
     """Statistics on `count` draws in which nothing predicts, and on the data by the same formulas.
 
     Each draw: shocks (e, v) of one date for every entity of every case at once, drawn with replacement or, wild, in
-    order with one random sign a date; x*_{t+1} = c + phi x*_t + v* from the actual first value; leg* = null x* +
-    window sums of e*, on the rows the data have. Added predictors keep their data values. One-period outcomes that
-    the data miss are missing in the draws' 1B errors too. All cases stand on one calendar.
+    order with one random sign a date; x*_{t+1} = c + phi x*_t + v* from the actual first value; leg* = (null -
+    through) x* + window sums of e* and of what x* predicts of them, on the rows the data have. Added predictors keep
+    their data values. One-period outcomes that the data miss are missing in the draws' 1B errors too. All cases stand
+    on one calendar.
     Chunks of draws have a stream of random numbers each, so any number of workers behind `spread` gives the same bits.
     Source: Nelson and Kim (1993, JF 48:641); Goyal and Welch (2008, RFS 21:1455) for draws under the null.
     """
@@ -151,7 +152,7 @@ def few_draws(count: int) -> tuple[str, ...]:
 def prepare(cases: Sequence[Case], scheme: Scheme) -> tuple[Prepared, ...]:
     """Fit the null of every case and lay out the shocks of all on the same dates."""
     kept = [_with_rows(case) for case in cases]
-    nulls = [fit_null(case.signal, _outcomes(case), case.entities) for case in kept]
+    nulls = [fit_null(case.signal, _outcomes(case), case.entities, _fed(case.question)) for case in kept]
     pool = shock_pool([null.pairs for null in nulls])
     shocks = [pooled_shocks(null, pool) if scheme == "resampled" else dated_shocks(null) for null in nulls]
     laid_out = [tuple(designs(case.question, case.groups)) for case in kept]
@@ -189,6 +190,8 @@ def simulate(one: Prepared, picks: Picks) -> tuple[Floats, Floats]:
             signal[t] += np.multiply(null.persistence[:, None], signal[t - 1], out=moved)
         if t in begins:
             signal[t, begins[t]] = null.start[begins[t], None]
+    if null.feed.any():
+        outcome[1:] += null.feed[:, None] * signal[:-1] + null.level[:, None]
     signal += null.mean[:, None]
     return signal, outcome
 
@@ -200,8 +203,8 @@ def measured(one: Prepared, picks: Picks) -> Measures:
     for design in one.designs:
         x, shocks = (np.take(values, design.columns, axis=1) for values in (signal, outcome))
         y = (design.ahead @ shocks.reshape(len(x), -1)).reshape(x.shape)
-        if design.null:
-            y += design.null * x
+        if design.beside:
+            y += design.beside * x
         found.append(measure(design, x, y, shocks))
     return joined(found, axis=0)
 
@@ -212,6 +215,14 @@ def _on_data(case: Case, design: Design) -> Measures:
     x, y = question.sample.x[:, own, :1].copy(), question.sample.y[:, own, question.leg, None].copy()
     found = measure(design, x, y, np.nan_to_num(_outcomes(case)[:, own, None]))
     return each(found, lambda values: values[:, 0])
+
+
+def _fed(question: Question) -> Fed | None:
+    """How the signal predicts one-period outcomes under the null; None where it does not."""
+    if not question.through:
+        return None
+    weights = one_step_of(question.sample, question.leg).weights[: question.sample.steps.max()]
+    return Fed(question.through, weights)
 
 
 def _outcomes(case: Case) -> Floats:

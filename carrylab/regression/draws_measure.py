@@ -71,6 +71,8 @@ class Group:
 class Design:
     """What stays the same in all draws of one panel: entities `columns`, effects, null slope, masks and windows.
 
+    `null`: the slope tested. `beside`: the part of it that draws add to the window sums of one-period outcomes.
+
     `mask` (T, n): rows of the regression. `there` (T, n): one-period outcomes that stand inside its windows.
     `ahead` (T, T) sums outcomes over each origin's window with the step weights; `back` is its transpose.
     `controls` (T n, K-1): added predictors after the effects are out, at their data values, made orthonormal.
@@ -79,6 +81,7 @@ class Design:
     columns: Ints
     effects: Effects
     null: float
+    beside: float
     mask: Bools
     there: Bools
     ahead: csr_array
@@ -89,12 +92,17 @@ class Design:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class Question:
-    """Which leg of a sample is asked about, its slope under the null, and the effects."""
+    """Which leg of a sample is asked about, its slope under the null, and the effects.
+
+    `through`: the part of the null slope that comes through one-period outcomes because the signal predicts them; the
+    rest stands beside their window sums, as where a leg less a multiple of the signal is what they add up to.
+    """
 
     sample: Sample
     leg: int
     null: float
     effects: Effects
+    through: float = 0.0
 
 
 def designs(question: Question, groups: tuple[Ints, ...]) -> list[Design]:
@@ -213,6 +221,7 @@ def _design(question: Question, columns: Ints, groups: tuple[Ints, ...]) -> Desi
         columns=columns,
         effects=question.effects,
         null=question.null,
+        beside=question.null - question.through,
         mask=part.mask,
         there=(back @ part.mask.astype(np.float64) != 0) & np.isfinite(outcome.outcomes),
         ahead=ahead,

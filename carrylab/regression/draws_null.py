@@ -11,13 +11,30 @@ from carrylab.errors import InferenceError
 from carrylab.regression.bias import PERSISTENCE_CAP
 from carrylab.regression.sample import Bools, Floats, Ints
 
+ROUNDS = 3  # in which persistence and the slope of one period settle on each other
 FEWEST = 12  # neighbouring dates an entity needs, for three coefficients and a bias correction of order 1/T
 
 
 @dataclass(frozen=True, eq=False, slots=True)
-class Null:
-    """y_{i,t+1} = mu_i + e, x_{i,t+1} = c_i + phi_i x_it + v, fitted entity by entity.
+class Fed:
+    """A null in which the signal predicts: window sums of outcomes with step weights (H,) have this `slope` on it."""
 
+    slope: float
+    weights: Floats
+
+    def one_period(self, persistence: Floats) -> Floats:
+        """Slope (N,) of the next outcome: that of the sum over the mean of phi^(j-1), j = 1..H, with the weights."""
+        ahead = persistence[:, None] ** np.arange(len(self.weights)) @ self.weights
+        found: Floats = self.slope / ahead
+        return found
+
+
+@dataclass(frozen=True, eq=False, slots=True)
+class Null:
+    """y_{i,t+1} = mu_i + feed_i x_it + e, x_{i,t+1} = c_i + phi_i x_it + v, fitted entity by entity.
+
+    `feed` (N,) is zero where nothing predicts; `level` (N,) is the mean that it gives the outcomes, so that their
+    window sums have the same slope between entities as within them.
     `names` (N,) of the entities. `persistence` (N,): phi, `capped` (N,) where it reached .999. `mean` (N,) of the
     signal; `first` (N,) row of its first value and `start` (N,) that value less the mean. `outcome` (T, N): e, and
     `signal` (T, N): v with mean zero, both in the row of the period in which they fall, NaN where there is none.
@@ -31,6 +48,8 @@ class Null:
     start: Floats
     outcome: Floats
     signal: Floats
+    feed: Floats
+    level: Floats
 
     @property
     def pairs(self) -> Bools:
@@ -38,8 +57,10 @@ class Null:
         return np.isfinite(self.outcome) & np.isfinite(self.signal)
 
 
-def fit_null(signal: Floats, outcomes: Floats, names: Sequence[str]) -> Null:
+def fit_null(signal: Floats, outcomes: Floats, names: Sequence[str], fed: Fed | None = None) -> Null:
     """Fit the null to a signal (T, N) and its one-period outcomes (T, N), NaN for holes; `names` (N,).
+
+    `fed`: how the signal predicts the outcomes under the null, None where it does not.
 
     phi_R is the slope of x_{t+1} on x_t in the regression on (1, x_t, e_{t+1}), the restricted seemingly unrelated
     estimate when nothing predicts; phi = phi_R + (1 - delta^2)(1 + 3 phi_R)/n, delta the correlation of e with the
@@ -47,18 +68,21 @@ def fit_null(signal: Floats, outcomes: Floats, names: Sequence[str]) -> Null:
     of the predictive slope too, and the draws reject 6-12% of true nulls at 5%.
     Source: Kendall (1954, Biometrika 41:403) for the correction; putting both together is our own.
     """
-    shocks = outcomes - _column_means(outcomes)
-    there = np.isfinite(signal)
-    here = there[1:] & there[:-1] & np.isfinite(shocks[1:])
+    here = transitions(signal, outcomes)
     short = np.flatnonzero(here.sum(axis=0) < FEWEST)
     if len(short):
         raise InferenceError(
             f"{names[short[0]]} has {here[:, short[0]].sum()} dates on which the signal, the one before it and the "
             f"one-period outcome stand, draws need {FEWEST}; leave it out or choose errors that need no draws"
         )
-    raw = np.array([_persistence(signal[:, i], shocks[:, i], here[:, i]) for i in range(signal.shape[1])])
-    persistence = np.clip(raw, -PERSISTENCE_CAP, PERSISTENCE_CAP)
-    mean, first = _column_means(signal), there.argmax(axis=0)
+    feed, shocks = np.zeros(signal.shape[1]), outcomes - _column_means(outcomes)
+    for _ in range(ROUNDS if fed else 1):
+        raw = np.array([_persistence(signal[:, i], shocks[:, i], here[:, i]) for i in range(signal.shape[1])])
+        persistence = np.clip(raw, -PERSISTENCE_CAP, PERSISTENCE_CAP)
+        if fed:
+            feed = fed.one_period(persistence)
+            shocks = _unpredicted(signal, outcomes, feed)
+    mean, first = _column_means(signal), np.isfinite(signal).argmax(axis=0)
     moved = np.full_like(signal, np.nan)
     moved[1:] = signal[1:] - mean - persistence * (signal[:-1] - mean)
     return Null(
@@ -70,7 +94,16 @@ def fit_null(signal: Floats, outcomes: Floats, names: Sequence[str]) -> Null:
         start=signal[first, np.arange(len(first))] - mean,
         outcome=shocks,
         signal=moved - _column_means(moved),
+        feed=feed,
+        level=mean * (fed.slope / fed.weights.sum()) if fed else np.zeros_like(mean),
     )
+
+
+def transitions(signal: Floats, outcomes: Floats) -> Bools:
+    """Where the signal, the one before it and the outcome in between stand (T-1, N)."""
+    there = np.isfinite(signal)
+    here: Bools = there[1:] & there[:-1] & np.isfinite(outcomes[1:])
+    return here
 
 
 def shock_pool(pairs: list[Bools]) -> Ints:
@@ -108,6 +141,14 @@ def dated_shocks(null: Null) -> Floats:
     rows = np.arange(len(null.outcome))
     own = np.stack([null.outcome, null.signal])
     return np.where(np.isfinite(own), own, pooled_shocks(null, rows))
+
+
+def _unpredicted(signal: Floats, outcomes: Floats, feed: Floats) -> Floats:
+    """Outcomes less what the signal of the period before predicts, with mean zero (T, N)."""
+    left = np.full_like(outcomes, np.nan)
+    left[1:] = outcomes[1:] - feed * signal[:-1]
+    centred: Floats = left - _column_means(left)
+    return centred
 
 
 def _persistence(signal: Floats, shocks: Floats, here: Bools) -> float:

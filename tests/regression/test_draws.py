@@ -1,6 +1,7 @@
 """Draws under the null: by hand, against the routines on each draw one by one, and their size."""
 
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -9,13 +10,15 @@ from carrylab.errors import InferenceError
 from carrylab.regression.covariance import ErrorOptions, standard_errors
 from carrylab.regression.draws import SCHEMES, Case, draw, picked, prepare, simulate
 from carrylab.regression.draws_measure import Question, window_sums
-from carrylab.regression.draws_null import dated_shocks, fit_null, pooled_shocks, shock_pool
+from carrylab.regression.draws_null import Fed, dated_shocks, fit_null, pooled_shocks, shock_pool
 from carrylab.regression.draws_tests import equal_tailed
 from carrylab.regression.fit import fit
 from carrylab.regression.sample import OneStep, make_sample, take
 
 
-def world(seed=0, T=90, N=4, h=3, *, phi=0.9, link=-0.8, holes=0.0, controls=0, null=0.0, weights=None, late=0):
+def world(
+    seed=0, T=90, N=4, h=3, *, phi=0.9, link=-0.8, holes=0.0, controls=0, null=0.0, weights=None, late=0, through=0.0
+):
     """A panel in which nothing predicts, and whose shocks to signal and outcome go together."""
     rng = np.random.default_rng(seed)
     weights = np.ones(h) if weights is None else np.asarray(weights)
@@ -30,10 +33,11 @@ def world(seed=0, T=90, N=4, h=3, *, phi=0.9, link=-0.8, holes=0.0, controls=0, 
     for t in range(T - h):
         leg[t] = weights @ one[t + 1 : t + 1 + h]
     one[rng.random((T, N)) < holes / 4] = np.nan
-    return case_of(signal, leg + null * signal, OneStep(one, weights), h, null, rng.standard_normal((T, N, controls)))
+    x = rng.standard_normal((T, N, controls))
+    return case_of(signal, leg + null * signal, OneStep(one, weights), h, null, x, through=through)
 
 
-def case_of(signal, leg, one_step, h, null=0.0, controls=None, effects="entity", groups=None):
+def case_of(signal, leg, one_step, h, null=0.0, controls=None, effects="entity", groups=None, through=0.0):
     T, N = signal.shape
     x = signal[:, :, None] if controls is None else np.concatenate([signal[:, :, None], controls], axis=2)
     sample = make_sample(
@@ -46,12 +50,12 @@ def case_of(signal, leg, one_step, h, null=0.0, controls=None, effects="entity",
         one_step=[one_step],
     )
     groups = groups or (np.arange(N), *(np.array([i]) for i in range(N)))
-    return Case(Question(sample, 0, null, effects), signal, groups, tuple(f"entity {i}" for i in range(N)))
+    return Case(Question(sample, 0, null, effects, through), signal, groups, tuple(f"entity {i}" for i in range(N)))
 
 
 def with_effects(case, effects, groups=None):
-    question = case.question
-    return Case(Question(question.sample, 0, question.null, effects), case.signal, groups or case.groups, case.entities)
+    question = replace(case.question, effects=effects)
+    return Case(question, case.signal, groups or case.groups, case.entities)
 
 
 def by_routines(sample, question, group):
@@ -65,14 +69,15 @@ def by_routines(sample, question, group):
 
 def drawn_sample(case, signal, outcome):
     """A Sample from one draw, with plain loops over origins and steps, and the holes of the data."""
-    sample, null, one = case.question.sample, case.question.null, case.question.sample.one_step[0]
+    sample, one = case.question.sample, case.question.sample.one_step[0]
+    beside = case.question.null - case.question.through
     T, N = signal.shape
     leg = np.full((T, N), np.nan)
     for t in range(T):
         for i in range(N):
             if sample.mask[t, i]:
                 ahead = sum(one.weights[s - 1] * outcome[t + s, i] for s in range(1, sample.steps[t] + 1))
-                leg[t, i] = null * signal[t, i] + ahead
+                leg[t, i] = beside * signal[t, i] + ahead
     x = sample.x.copy()
     x[:, :, 0] = signal
     x[~sample.mask] = np.nan
@@ -91,6 +96,9 @@ CASES = {
     "balanced": world(1),
     "holes and a late start": world(2, holes=0.06, late=30),
     "weights and a null of minus one": world(3, weights=[1.0, 0.9, 0.81], null=-1.0, holes=0.03),
+    "a slope of one through one-period outcomes": world(
+        10, null=1.0, through=1.0, weights=[1.0, 0.9, 0.81], holes=0.03
+    ),
     "two added predictors": world(4, controls=2, holes=0.03),
     "no effects": with_effects(world(5, holes=0.03, N=3), "none"),
     "time effects": with_effects(world(6, holes=0.03), "time", (np.arange(4), np.array([0, 2, 3]))),
@@ -168,6 +176,41 @@ def test_persistence_under_the_null_by_hand():
     v = x[1:] - x.mean() - corrected * (x[:-1] - x.mean())
     assert np.allclose(found.signal[1:, 0], v - v.mean())
     assert found.start[0] == pytest.approx(x[0] - x.mean())
+
+
+def test_a_slope_imposed_on_window_sums_comes_through_single_periods():
+    """Root .5, two steps of weight 1: a sum of slope 1 needs 1/(1 + .5) in each period; weights .5 halve their sum."""
+    assert Fed(1.0, np.ones(2)).one_period(np.array([0.5])) == pytest.approx(2 / 3)
+    assert Fed(1.0, np.full(2, 0.5)).one_period(np.array([0.5])) == pytest.approx(4 / 3)
+
+
+def test_the_shocks_of_an_imposed_slope_by_hand():
+    """One period ahead with slope 1: the shock is outcome less signal, mean out, and persistence is fitted with it."""
+    rng = np.random.default_rng(0)
+    x, y = rng.standard_normal((2, 30))
+    x[1:] += 0.7 * x[:-1]
+    found = fit_null(x[:, None], y[:, None], ["one"], Fed(1.0, np.ones(1)))
+    shock = y[1:] - x[:-1]
+    assert np.allclose(found.outcome[1:, 0], shock - shock.mean())
+    plain = fit_null(x[:, None], np.append(0.0, shock)[:, None], ["one"])
+    assert found.persistence[0] == pytest.approx(plain.persistence[0], abs=1e-3)
+    assert (found.feed[0], found.level[0]) == pytest.approx((1.0, x.mean()))
+
+
+@pytest.mark.parametrize("effects", ["entity", "none"])
+def test_drawn_slopes_scatter_around_the_slope_imposed(effects):
+    """Shocks of signal and outcome apart, so that there is no bias; 12 months, entity means far apart."""
+    case = world(12, T=1500, N=5, h=12, phi=0.5, link=0.0, null=1.0, through=1.0)
+    case = replace(case, signal=case.signal + 5 * np.arange(5.0), groups=(np.arange(5),))
+    question = replace(case.question, effects=effects, sample=shifted(case.question.sample, 5 * np.arange(5.0)))
+    found = draw([replace(case, question=question)], 400, seed=2).draws
+    assert abs(found.slope.mean() - 1.0) < 4 * found.slope.std() / 20
+    assert abs(found.cosine.mean()) < 0.25
+
+
+def shifted(sample, by):
+    x = sample.x + np.where(sample.mask, by, 0.0)[:, :, None]
+    return replace(sample, x=x)
 
 
 def test_persistence_is_capped_and_said_to_be():
