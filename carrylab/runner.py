@@ -241,10 +241,8 @@ def estimate(built: Built, economies: Mapping[str, str], questions: Questions | 
     said += [drawn.refused] if drawn.refused else []
     for case in cases:
         family, parity = case.fits, case.parity
-        other = parity.name in drawn.parities
-        rows += [
-            row for one in family for row in (*share_rows(one, drawn=other), *summary_rows(one, said), *other_rows(one))
-        ]
+        for one in family:
+            rows += [*share_rows(one, drawn=drawn.covers(one)), *summary_rows(one, said), *other_rows(one)]
         rows += group_rows(family[1:], built.market.inference.joint)
         rows += regression_ledger_rows(family[0])
         rows += latest_rows(family[0], case.terms)

@@ -15,7 +15,8 @@ from carrylab.evidence.drawn import (
     Drawn,
     DrawnRows,
     columns_of,
-    names_of,
+    every_entity,
+    keys_of,
     rows_of,
     summed_up,
 )
@@ -43,7 +44,8 @@ def curve_rows(families: Sequence[Sequence[Fit]], curves: YieldCurves, count: in
     except InferenceError as refused:
         return DrawnRows((), frozenset(), f"no draws of yield curves: {refused}")
     said = _said(found, chosen[0][0].confidence)
-    return DrawnRows(tuple(rows_of(chosen, said)), names_of(chosen), "")
+    whole = [every_entity(family) for family in chosen]
+    return DrawnRows(tuple(rows_of(whole, said)), keys_of(whole), "")
 
 
 def _periods(length: Tenor, fit: Fit) -> int:
@@ -101,6 +103,6 @@ def _spread_weights(maturities: Ints, long: Ints, holding: int) -> Floats:
 
 def _said(found: CurveDraws, confidence: float) -> Drawn:
     data, draws = found.data, found.draws
-    slopes = (data.slope, draws.slope, np.zeros_like(data.slope))
     words = f"equal-tailed p of the cosine t, {found.words}"
-    return summed_up(slopes, (data.cosine, draws.cosine), draws.r2, confidence, words)
+    t = (data.cosine, draws.cosine)
+    return summed_up((data, draws), np.zeros_like(data.slope), t, confidence, words)

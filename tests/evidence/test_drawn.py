@@ -117,10 +117,63 @@ def test_the_report_says_what_both_opinions_say_together(tmp_path: Path) -> None
     assert "199 draws under the null" in results.report()
 
 
-def test_a_panel_that_cannot_be_drawn_keeps_the_instrument_and_says_why(tmp_path: Path) -> None:
+def young(codes: tuple[str, ...]) -> dict[str, pd.DataFrame]:
+    """Currencies some of which have prices from 2009-03 on alone: ten months with a horizon inside the sample."""
     files = worlds.currencies()
     spot = files["spot"]
-    young = (spot["currency"] == "CCC") & (spot["date"] < "2009-03")
-    found = findings(tmp_path, worlds.CURRENCIES, files | {"spot": spot[~young]}, f"draws = {DRAWS}")
+    return files | {"spot": spot[~(spot["currency"].isin(codes) & (spot["date"] < "2009-03"))]}
+
+
+def test_a_market_that_cannot_be_drawn_keeps_the_instrument_and_says_why(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.CURRENCIES, young(("BBB", "CCC")), f"draws = {DRAWS}")
     assert "instrument" in of(found, "shares", "nothing paid")["method"]
-    assert found.loc[found["section"] == "warning", "note"].str.contains("no draws under the null: .*CCC").any()
+    assert found.loc[found["section"] == "warning", "note"].str.contains("no draws under the null: .*BBB").any()
+    assert not (found["section"] == "draws").any()
+
+
+def test_a_short_entity_is_left_out_of_the_draws_alone(tmp_path: Path) -> None:
+    """What is left of the pooled panel is the other currency, whose own test it is; the short one keeps its own."""
+    found = findings(tmp_path, worlds.CURRENCIES, young(("CCC",)), f"draws = {DRAWS}")
+    warnings = found.loc[found["section"] == "warning", "note"]
+    assert warnings.str.contains("CCC left out of the draws, with fewer than 12 dates").any()
+    drawn = found[(found["section"] == "draws") & (found["term"] == "nothing paid")].set_index("group")
+    assert set(drawn.index) == {"pooled", "BBB"}
+    for field in ("estimate", "statistic", "p_value"):
+        assert drawn.loc["pooled", field] == pytest.approx(drawn.loc["BBB", field], rel=1e-9)
+    assert drawn.loc["pooled", "note"] == "without CCC"
+    assert drawn.loc["BBB", "note"] == ""
+    kept = found[(found["group"] == "CCC") & (found["term"] == "nothing paid") & (found["rank"] == "second opinion")]
+    assert "instrument" in kept["method"].iloc[0]
+    slope = found[(found["section"] == "shares") & (found["group"] == "pooled") & (found["term"] == "nothing paid")]
+    assert slope["n_entities"].iloc[0] == 2
+
+
+def test_the_interval_by_inversion_leaves_out_what_the_cosine_t_rejects(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies(), f"draws = {DRAWS}")
+    row = of(found, "draws", "slope by inversion")
+    assert row["lower"] < row["estimate"] < row["upper"]
+    assert row["estimate"] == pytest.approx(of(found, "draws", "nothing paid")["estimate"])
+
+
+def test_all_paid_is_drawn_where_it_is_true(tmp_path: Path) -> None:
+    """The share that comes true, its cosine t against none, and a p-value a few draws at most from that of the tables.
+
+    On the demo's currencies and here shocks of rates and prices go apart, so tables and draws agree.
+    """
+    found = findings(tmp_path, worlds.CURRENCIES, worlds.currencies(), "draws = 999")
+    for group in ("pooled", "BBB", "CCC"):
+        drawn, tables = (
+            of(found, "draws", "all paid", group),
+            found[(found["section"] == "shares") & (found["term"] == "all paid") & (found["group"] == group)].iloc[0],
+        )
+        assert drawn["estimate"] == pytest.approx(tables["estimate"], rel=1e-9)
+        assert abs(drawn["statistic"]) == pytest.approx(abs(tables["statistic"]), rel=1e-6)
+        assert abs(drawn["p_value"] - tables["p_value"]) < 0.25
+        assert "nothing comes true" in drawn["method"]
+
+
+def test_three_legs_are_drawn_under_one_null_only(tmp_path: Path) -> None:
+    found = findings(tmp_path, worlds.EQUITIES, worlds.equities(), f"draws = {DRAWS}")
+    drawn = found[found["section"] == "draws"]
+    assert (drawn["term"] == "nothing paid").any()
+    assert not (drawn["term"] == "all paid").any()
