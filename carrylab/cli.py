@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import sys
 from collections.abc import Callable
 from pathlib import Path
@@ -35,6 +36,8 @@ class Commands(click.Group):
 @click.version_option(__version__, prog_name="carrylab")
 def main() -> None:
     """Is a price spread paid out as excess return, or does it come true in the fundamental it is about?"""
+    # Draws go to workers of their own; a linear algebra library that starts threads inside each makes them wait.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     # A console that cannot show a character gets a question mark instead of a crash.
     for stream in (sys.stdout, sys.stderr):
         reconfigure: Callable[..., None] | None = getattr(stream, "reconfigure", None)

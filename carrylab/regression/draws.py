@@ -50,7 +50,7 @@ class Case:
 class Draws:
     """Statistics of H hypotheses, all groups of all cases in order, on the data (H,) and on B draws (B, H).
 
-    `nulls` (H,): slopes under the null. `fitted`: the null of each case, its entities those that have rows.
+    `nulls` (H,): slopes under the null. `fitted`: the null of each different case, its entities those that have rows.
     `added`: whether any case has added predictors. `scheme` and `seed` as used.
     """
 
@@ -119,7 +119,8 @@ def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resa
     dates = {len(case.question.sample.mask) for case in cases}
     if len(dates) != 1:
         raise InferenceError(f"draws taken together need one calendar, these have {sorted(dates)} dates; draw apart")
-    prepared = prepare(cases, scheme)
+    different, order = _different(cases)
+    prepared = prepare(different, scheme)
     counts = chunks(count, max(case.question.sample.mask.size for case in cases))
     streams = np.random.default_rng(seed).spawn(len(counts))
     # A resampled row is drawn from the pool; a wild one has its own.
@@ -131,14 +132,50 @@ def draw(cases: Sequence[Case], count: int, *, seed: int, scheme: Scheme = "resa
 
     drawn = joined(list(spread(one_chunk, streams, counts)), axis=1)
     return Draws(
-        data=joined([one.data for one in prepared], axis=0),
-        draws=each(drawn, np.transpose),
+        data=each(joined([one.data for one in prepared], axis=0), lambda values: values[order]),
+        draws=each(drawn, lambda values: values[order].T),
         nulls=np.concatenate([np.full(len(case.groups), case.question.null) for case in cases]),
         fitted=tuple(one.null for one in prepared),
         added=any(len(case.question.sample.terms) > 1 for case in cases),
         scheme=scheme,
         seed=seed,
     )
+
+
+def _different(cases: Sequence[Case]) -> tuple[list[Case], Ints]:
+    """The cases without those that repeat an earlier one, and where each hypothesis of all cases stands in theirs.
+
+    Two parities of a market may be one regression under two names, as carry and the rate differential of currencies.
+    """
+    different: list[Case] = []
+    begins, order, total = [], [], 0
+    for case in cases:
+        at = next((at for at, other in enumerate(different) if _same(case, other)), len(different))
+        if at == len(different):
+            different.append(case)
+            begins.append(total)
+            total += len(case.groups)
+        order.append(np.arange(begins[at], begins[at] + len(case.groups)))
+    return different, np.concatenate(order)
+
+
+def _same(one: Case, other: Case) -> bool:
+    """Whether two cases draw the same regressions from the same data."""
+    ours, theirs = one.question, other.question
+    asked = [(q.null, q.through, q.effects, q.sample.terms, q.sample.overlap) for q in (ours, theirs)]
+    outcomes = [one_step_of(q.sample, q.leg) for q in (ours, theirs)]
+    pairs = [
+        (one.signal, other.signal),
+        (ours.sample.x, theirs.sample.x),
+        (ours.sample.y[:, :, ours.leg], theirs.sample.y[:, :, theirs.leg]),
+        (ours.sample.mask, theirs.sample.mask),
+        (ours.sample.steps, theirs.sample.steps),
+        (outcomes[0].outcomes, outcomes[1].outcomes),
+        (outcomes[0].weights, outcomes[1].weights),
+        *zip(one.groups, other.groups, strict=False),
+    ]
+    alike = asked[0] == asked[1] and one.entities == other.entities and len(one.groups) == len(other.groups)
+    return alike and all(np.array_equal(a, b, equal_nan=a.dtype == np.float64) for a, b in pairs)
 
 
 def few_draws(count: int) -> tuple[str, ...]:

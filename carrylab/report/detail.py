@@ -9,6 +9,7 @@ from typing import Any
 
 import pandas as pd
 
+from carrylab.report.drawn import draw_notes
 from carrylab.report.numbers import digits_of, fixed, in_brackets, in_parentheses, p_value
 from carrylab.report.table import (
     Cell,
@@ -33,12 +34,15 @@ def detail_tables(findings: pd.DataFrame) -> Iterator[Table]:
     shares = findings[findings["section"] == "shares"]
     joint = findings[(findings["section"] == "joint") & (findings["group"] == "all groups")]
     others = findings[(findings["section"] == "other methods") & (findings["group"] == "pooled")]
+    drawn = findings[(findings["section"] == "draws") & (findings["group"] == "pooled")]
     for key, rows in shares.groupby(["market", "parity", "horizon"], sort=False):
         market, parity, horizon = (str(part) for part in key)
-        own = (joint["market"] == market) & (joint["parity"] == parity) & (joint["horizon"] == horizon)
-        there = (others["market"] == market) & (others["parity"] == parity) & (others["horizon"] == horizon)
-        found = _detail(f"{market}: {parity}, {horizon}, by {rows['interval'].iloc[0]}", rows, joint[own])
-        yield replace(found, notes=(*found.notes, *_other_notes(others[there])))
+        own, there, made = (
+            part[(part["market"] == market) & (part["parity"] == parity) & (part["horizon"] == horizon)]
+            for part in (joint, others, drawn)
+        )
+        found = _detail(f"{market}: {parity}, {horizon}, by {rows['interval'].iloc[0]}", rows, own)
+        yield replace(found, notes=(*found.notes, *_other_notes(there), *draw_notes(made)))
 
 
 def _detail(title: str, rows: pd.DataFrame, joint: pd.DataFrame) -> Table:

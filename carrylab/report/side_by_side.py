@@ -212,6 +212,7 @@ def _tests(columns: list[Column]) -> list[Line]:
         _line("  by draws", columns, _beside),
         _line("  at 5%, a premium is", columns, verdict_of),
         _line("all is paid", columns, lambda c: p_of(c.find("all paid"))),
+        _line("  by draws", columns, lambda c: p_of(c.find("all paid", section="draws"))),
         _line(
             "size of 1B from bias, %",
             columns,

@@ -115,6 +115,10 @@ def test_the_report_says_what_both_opinions_say_together(tmp_path: Path) -> None
     assert results.table().loc["  at 5%, a premium is", "FX"] == "not seen"
     assert "  least squares, bias out" in results.table().index
     assert "199 draws under the null" in results.report()
+    assert "Draws under the null, pooled: by chance alone" in results.report()
+    below = list(results.table().index).index("all is paid") + 1
+    assert results.table().index[below] == "  by draws"
+    assert 0 < float(results.table()["FX"].iloc[below]) <= 1
 
 
 def young(codes: tuple[str, ...]) -> dict[str, pd.DataFrame]:

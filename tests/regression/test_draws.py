@@ -6,6 +6,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+import carrylab.regression.draws
 from carrylab.errors import InferenceError
 from carrylab.regression.covariance import ErrorOptions, standard_errors
 from carrylab.regression.draws import SCHEMES, Case, draw, picked, prepare, simulate
@@ -282,6 +283,17 @@ def test_cases_drawn_together_share_their_dates():
     assert np.array_equal(both[:, :5], draw([case], 20, seed=3).draws.one_period)
     assert not np.array_equal(both[:, :5], draw([case], 20, seed=4).draws.one_period)
     assert np.corrcoef(both[:, 0], both[:, 5])[0, 1] > 0.3
+
+
+def test_a_case_that_repeats_another_is_measured_once(monkeypatch):
+    measured, made = carrylab.regression.draws.measured, []
+    monkeypatch.setattr("carrylab.regression.draws.measured", lambda one, picks: made.append(1) or measured(one, picks))
+    case, other = world(1), world(1, null=1.0, through=1.0)
+    found = draw([case, other, case], 5, seed=1)
+    assert len(made) == 2
+    assert found.draws.slope.shape == (5, 15)
+    assert np.array_equal(found.draws.slope[:, :5], found.draws.slope[:, 10:])
+    assert np.array_equal(found.nulls, np.repeat([0.0, 1.0, 0.0], 5))
 
 
 def test_an_entity_without_rows_changes_nothing():
