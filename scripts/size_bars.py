@@ -24,7 +24,7 @@ class Bar:
 BARS = (
     Bar("currencies", "", "one-period", 3.5, 7),
     Bar("currencies", "N 1,", "draws", 3, 7),
-    Bar("currencies", "N [13]0,", "draws", 3, 8),
+    Bar("currencies", "N 10,", "draws", 3, 8),
     Bar("currencies", "N 10, T 240, h 12$", "bartlett", 13, 20, fails=True),
     Bar("currencies", "N 30,", "clustered: entity", 40, 100, fails=True),
     Bar("currencies", "h 12$", "clustered: date", 50, 100, fails=True),
