@@ -9,14 +9,14 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-ROOT = Path(__file__).resolve().parents[2]
-sys.path.insert(0, str(ROOT / "scripts"))
+sys.path.insert(0, str(Path(__file__).resolve().parents[2] / "scripts"))
 
 import size_worlds
 from size_bars import BARS, Bar, allowed, bars_of, outside
 from size_cells import CELLS, counted
 from size_table import Result, complaints, read, tables, write
 
+ROOT = Path(__file__).resolve().parents[2]
 RECORD = ROOT / "scripts" / "sizes.csv"
 
 
