@@ -89,6 +89,14 @@ def horizons() -> None:
         print(line)
 
 
+def windows() -> None:
+    """Rolling and expanding windows against loops."""
+    from bench_windows import lines
+
+    for line in lines():
+        print(line)
+
+
 if __name__ == "__main__":
     python = prepare("test")
     if Path(sys.prefix).resolve() != python.parent.parent.resolve():
@@ -98,3 +106,4 @@ if __name__ == "__main__":
     first_figure()
     routines()
     horizons()
+    windows()

@@ -13,6 +13,7 @@ from carrylab.evidence.parts import part_rows
 from carrylab.evidence.setting import Row
 from carrylab.evidence.states import state_rows
 from carrylab.evidence.surveys import survey_rows
+from carrylab.evidence.windows import window_rows
 from carrylab.options import Questions
 
 # Each returns no rows where its question is not asked.
@@ -22,6 +23,7 @@ OF_ONE_PARITY: tuple[Callable[[Case, Questions], list[Row]], ...] = (
     survey_rows,
     curve_rows,
     forecast_rows,
+    window_rows,
 )
 OF_ALL_MARKETS: tuple[Callable[[Sequence[Case], Questions], list[Row]], ...] = (horizon_rows, across_market_rows)
 

@@ -42,7 +42,11 @@ def _of_state(case: Case, state: Labelled) -> Iterator[Row]:
         yield from (row | {"section": "states", "rank": ""} for row in kept)
         yield from (one.place() | {"section": "states"} | row for row in _earned(case.pooled, inside, state.note))
     if len(fits) > 1:
-        yield case.pooled.place() | {"section": "states", "sample": state.name} | _equal(fits, state)
+        yield (
+            case.pooled.place()
+            | {"section": "states", "sample": state.name}
+            | equal_row(fits, f"equal in all states of {state.name}", state.note)
+        )
 
 
 def _earned(fit: Fit, inside: Floats, note: str) -> Iterator[Row]:
@@ -61,10 +65,9 @@ def _earned(fit: Fit, inside: Floats, note: str) -> Iterator[Row]:
     yield {"term": "mean excess return", **found, "lags": run.cosines}
 
 
-def _equal(fits: Sequence[Fit], state: Labelled) -> Row:
-    """Equal premium shares in all states; without a return leg, equal slopes of the first leg."""
+def equal_row(fits: Sequence[Fit], term: str, note: str) -> Row:
+    """Equal premium shares in samples that do not meet; without a return leg, equal slopes of the first leg."""
     at = fits[0].leg_of("return") or 0
-    term = f"equal in all states of {state.name}"
     values = np.array([fit.estimate.coefficients[0, at] for fit in fits])
     series = np.stack([fit.estimate.influence[:, 0, at] for fit in fits], axis=1)
     matrix = np.hstack([np.ones((len(fits) - 1, 1)), -np.eye(len(fits) - 1)])
@@ -82,7 +85,7 @@ def _equal(fits: Sequence[Fit], state: Labelled) -> Row:
         "p_value": found.p_value,
         "lags": found.cosines,
         "method": f"{found.law} from {found.cosines} equal-weighted cosines, overlap {overlap}",
-        "note": state.note,
+        "note": note,
     }
 
 

@@ -19,6 +19,7 @@ from carrylab.report.slope_parts import part_tables
 from carrylab.report.states import state_tables
 from carrylab.report.surveys import survey_tables
 from carrylab.report.table import Table
+from carrylab.report.windows import window_tables
 
 # A table, or a sentence or two.
 Piece = Table | str
@@ -78,6 +79,7 @@ def _there(table: Table | None) -> Iterator[Table]:
 # Answers to the further questions of a study, each in a module of its own beside this one.
 EVIDENCE: tuple[Section, ...] = (
     Section("Horizons", horizon_tables),
+    Section("Periods", window_tables),
     Section("Parts of the slope", part_tables),
     Section("States", state_tables),
     Section("The rest of the curve", curve_tables),
