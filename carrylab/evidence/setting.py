@@ -155,7 +155,7 @@ def _facts(parity: Parity, sample: Sample, estimate: Estimate, one_period: bool,
         ratio=ratio,
         windows=windows_of(sample, estimate),
         one_period=one_period,
-        bonds=bool(parity.entities[0].maturity),
+        curves=len({entity.economy for entity in parity.entities if entity.maturity}),
     )
 
 

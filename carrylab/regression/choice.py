@@ -27,13 +27,16 @@ class Choice:
 
 @dataclass(frozen=True, slots=True)
 class Facts:
-    """What the choice rests on: entities, bias over standard error, windows T/h, one-period outcomes, bonds or not."""
+    """What the choice rests on: entities, bias over standard error, windows T/h, one-period outcomes, and curves.
+
+    `curves`: economies whose yield curves the signal is read from, none where it is no bond spread.
+    """
 
     entities: int
     ratio: float
     windows: float
     one_period: bool
-    bonds: bool
+    curves: int
 
 
 def choose(facts: Facts) -> Choice:
@@ -41,13 +44,16 @@ def choose(facts: Facts) -> Choice:
 
     Hodrick's 1B where the signal is not endogenous: |bias| < .3 standard errors and at least ten windows. Otherwise,
     and for bonds, whose curve forecasts itself under the null, the IVX instrument with one-period scores; for panels
-    draws under the null come first where they are made. Without one-period outcomes equal-weighted cosines.
+    and for the curve of one economy draws under the null come first where they are made. Without one-period outcomes
+    equal-weighted cosines.
     """
     panel = facts.entities > 1
     if not facts.one_period:
         return Choice("cosine", "instrument, cosine", "beside", "outcomes of single periods are missing")
-    if facts.bonds:
-        return Choice("instrument", "one-period", "second opinion", "a curve forecasts itself under the null")
+    if facts.curves:
+        # Draws of one economy's curve hold their size; those of several do not always, so they stand second.
+        draws: Rank = "headline" if facts.curves == 1 else "second opinion"
+        return Choice("instrument", "one-period", draws, "a curve forecasts itself under the null")
     strong = strength(facts)
     if strong:
         return Choice("instrument", "instrument, cosine", "headline" if panel else "second opinion", strong, True)

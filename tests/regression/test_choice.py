@@ -7,7 +7,7 @@ import pytest
 
 from carrylab.regression.choice import Facts, choose
 
-SERIES = Facts(entities=1, ratio=0.1, windows=40.0, one_period=True, bonds=False)
+SERIES = Facts(entities=1, ratio=0.1, windows=40.0, one_period=True, curves=0)
 PANEL = replace(SERIES, entities=10)
 
 
@@ -19,7 +19,8 @@ PANEL = replace(SERIES, entities=10)
         (replace(SERIES, ratio=-0.3), "instrument", "instrument, cosine", "second opinion", True),
         (replace(PANEL, ratio=0.31), "instrument", "instrument, cosine", "headline", True),
         (replace(PANEL, windows=9.9), "instrument", "instrument, cosine", "headline", True),
-        (replace(PANEL, bonds=True), "instrument", "one-period", "second opinion", False),
+        (replace(PANEL, curves=10), "instrument", "one-period", "second opinion", False),
+        (replace(PANEL, curves=1), "instrument", "one-period", "headline", False),
         (replace(PANEL, one_period=False), "cosine", "instrument, cosine", "beside", False),
     ],
 )
