@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING
 from carrylab.errors import CarrylabError, DataError, ExtraError, InferenceError, SampleError, StudyError
 
 if TYPE_CHECKING:
+    from carrylab.calibration import Calibration
     from carrylab.data.checks import Check
     from carrylab.options import Study
     from carrylab.results import Results
@@ -27,6 +28,7 @@ __all__ = [
     "InferenceError",
     "SampleError",
     "StudyError",
+    "calibrate",
     "check",
     "read_study",
     "run",
@@ -57,3 +59,23 @@ def run(study: Study, *, audit: bool = False, progress: Callable[[str], None] | 
     from carrylab.runner import run
 
     return run(study, audit=audit, progress=progress)
+
+
+def calibrate(
+    study: Study,
+    *,
+    runs: int = 1000,
+    draws: int = 0,
+    seed: int = 7,
+    wild: bool = False,
+    progress: Callable[[str], None] | None = None,
+) -> Calibration:
+    """What a study's tests are worth on its own samples: true size, power, smallest share and coverage, simulated.
+
+    `runs` samples of each regression, in which nothing is paid and then half and all of the spread; `draws` under the
+    null in each of up to 200 of them, 0 for none; `wild` keeps the dates in order with a random sign each, else they
+    are drawn with replacement. The same seed gives the same numbers.
+    """
+    from carrylab.calibration import Options, calibrate
+
+    return calibrate(study, Options(runs, draws, seed, wild), progress)

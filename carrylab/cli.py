@@ -82,6 +82,23 @@ def run(study: Path, into: Path | None, audit: bool, parquet: bool, width: int, 
     click.echo(f"Run folder: {target}")
 
 
+@main.command()
+@STUDY
+@click.option("--runs", type=int, default=1000, show_default=True, help="Simulated samples of each regression.")
+@click.option("--draws", type=int, default=0, help="Draws under the null in each of up to 200 samples [default: none].")
+@click.option("--seed", type=int, default=7, show_default=True, help="Seed of the random numbers.")
+@click.option("--wild", is_flag=True, help="Keep dates in order, a random sign each, and so times of high volatility.")
+@click.option("--width", type=click.IntRange(60, 400), default=100, show_default=True, help="Columns of text.")
+def calibrate(study: Path, runs: int, draws: int, seed: int, wild: bool, width: int) -> None:
+    """Simulate STUDY's own samples with nothing paid: true size, power and coverage of every kind of error."""
+    import carrylab
+
+    found = carrylab.calibrate(
+        carrylab.read_study(study), runs=runs, draws=draws, seed=seed, wild=wild, progress=_progress()
+    )
+    click.echo(found.report(width), nl=False)
+
+
 def _progress() -> Callable[[str], None] | None:
     if not sys.stderr.isatty():
         return None

@@ -348,6 +348,11 @@ def _fits(parity: Parity, sample: Sample, market: Market) -> Iterator[Fit]:
         yield replace(_fit(parity, part, label, market), columns=tuple(columns))
 
 
+def pooled_fit(parity: Parity, built: Built) -> Fit:
+    """One parity of a market with all its entities, and the study's errors."""
+    return _fit(parity, sample_of(parity, built.data)[0], "pooled", built.market)
+
+
 def _fit(parity: Parity, sample: Sample, group: str, market: Market, name: str = "all") -> Fit:
     options = error_options(market.inference)
     found = fit(sample, effects=market.effects)

@@ -31,7 +31,7 @@ def study(tmp_path: Path) -> Path:
 
 
 def test_every_command_has_help() -> None:
-    assert set(cli.main.commands) == {"check", "run", "show", "start"}
+    assert set(cli.main.commands) == {"calibrate", "check", "run", "show", "start"}
     for name in cli.main.commands:
         found = call(name, "--help")
         assert found.exit_code == 0

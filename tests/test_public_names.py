@@ -17,6 +17,7 @@ def test_the_public_names() -> None:
         "InferenceError",
         "SampleError",
         "StudyError",
+        "calibrate",
         "check",
         "read_study",
         "run",

@@ -37,9 +37,9 @@ def curve_rows(families: Sequence[Sequence[Fit]], curves: YieldCurves, count: in
     if not count or step is None:
         return NOTHING_DRAWN
     try:
-        quoted = _curves(chosen, curves, step)
+        quoted = curves_of(chosen, curves, step)
         with ThreadPoolExecutor(WORKERS) as pool:
-            cases = [_claims(family, quoted, step) for family in chosen]
+            cases = [claims_for(family, quoted, step) for family in chosen]
             found = draw_curves(quoted, cases, count, seed=seed, spread=pool.map)
     except InferenceError as refused:
         return DrawnRows((), frozenset(), f"no draws of yield curves: {refused}")
@@ -48,7 +48,7 @@ def curve_rows(families: Sequence[Sequence[Fit]], curves: YieldCurves, count: in
     return DrawnRows(tuple(rows_of(whole, said)), keys_of(whole), "")
 
 
-def _periods(length: Tenor, fit: Fit) -> int:
+def periods(length: Tenor, fit: Fit) -> int:
     """A length in periods of the fit's calendar."""
     steps = steps_in(length, fit.parity.calendar.interval)
     if steps is None:
@@ -56,30 +56,44 @@ def _periods(length: Tenor, fit: Fit) -> int:
     return steps
 
 
-def _curves(families: Sequence[Sequence[Fit]], curves: YieldCurves, step: Tenor) -> Curves:
-    """Yields of every maturity the parities use, and the shortest quoted, for the economies in the fits."""
+def curves_of(families: Sequence[Sequence[Fit]], curves: YieldCurves, step: Tenor, *, lives: bool = False) -> Curves:
+    """Yields of every maturity the parities use, and the shortest quoted, for the economies in the fits.
+
+    `lives`: also of every maturity that bonds with one-period outcomes pass through while they are held.
+    """
     first = families[0][0]
     economies = tuple(dict.fromkeys(e.economy for family in families for e in family[0].parity.entities))
-    wanted = {_periods(curves.quoted.tenors[0], first)}
+    wanted = {periods(curves.quoted.tenors[0], first)}
     for family in families:
         h = family[0].parity.horizon
         for entity in family[0].parity.entities:
             n = parse_tenor(entity.maturity)
-            wanted |= {_periods(length, first) for length in (h, n, n - h)}
+            wanted |= {periods(length, first) for length in (h, n, n - h)}
+            if lives and has_steps(family[0]):
+                wanted |= {
+                    m - gone for m in (periods(n, first), periods(h, first)) for gone in range(periods(h, first))
+                }
     columns = [curves.quoted.codes.index(code) for code in economies]
     maturities = np.array(sorted(wanted), dtype=np.int64)
     yields = np.stack([curves.yields(step.times(int(n)))[:, columns] for n in maturities], axis=2)
     return Curves(yields, maturities, economies)
 
 
-def _claims(family: Sequence[Fit], curves: Curves, step: Tenor) -> Claims:
+def has_steps(fit: Fit) -> bool:
+    """Whether the return leg of a fit has one-period outcomes by origin and step."""
+    at = fit.leg_of("return")
+    outcome = None if at is None else fit.sample.one_step[at]
+    return outcome is not None and outcome.outcomes.ndim == 3
+
+
+def claims_for(family: Sequence[Fit], curves: Curves, step: Tenor) -> Claims:
     """The pooled fit as claims on curves: what its signals and returns are in yields."""
     pooled = family[0]
     at = pooled.leg_of("return")
     assert at is not None
     parity = pooled.parity
-    long: Ints = np.array([_periods(parse_tenor(e.maturity), pooled) for e in parity.entities], dtype=np.int64)
-    holding = _periods(parity.horizon, pooled)
+    long: Ints = np.array([periods(parse_tenor(e.maturity), pooled) for e in parity.entities], dtype=np.int64)
+    holding = periods(parity.horizon, pooled)
     years = horizon_years(step, parity.calendar.interval)
     signal, now, later = forward_spot_claims(curves.maturities, long, holding, years)
     if parity.name == "yield-spread":

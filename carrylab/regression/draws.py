@@ -212,15 +212,20 @@ def picked(stream: np.random.Generator, shape: tuple[int, int], pool: int, schem
 
 def simulate(one: Prepared, picks: Picks) -> tuple[Floats, Floats]:
     """Signal and one-period outcomes (T, N, B) of a chunk; the signal before an entity's first date is no value."""
-    (T, B), N = picks.shape, one.shocks.shape[2]
+    return paths(one.null, one.shocks, picks)
+
+
+def paths(null: Null, shocks: Floats, picks: Picks) -> tuple[Floats, Floats]:
+    """Signal and one-period outcomes (T, N, B) of a null with shocks laid out (2, D, N), as `simulate` gives them."""
+    (T, B), N = picks.shape, shocks.shape[2]
     outcome, signal = np.empty((T, N, B)), np.empty((T, N, B))
-    for drawn, table in zip((outcome, signal), one.shocks, strict=True):
+    for drawn, table in zip((outcome, signal), shocks, strict=True):
         if picks.dtype == np.float64:
             np.multiply(table[:, :, None], picks[:, None], out=drawn)
         else:
             for i in range(N):
                 drawn[:, i] = np.ascontiguousarray(table[:, i])[picks]
-    null, begins = one.null, {int(row): np.flatnonzero(one.null.first == row) for row in np.unique(one.null.first)}
+    begins = {int(row): np.flatnonzero(null.first == row) for row in np.unique(null.first)}
     moved = np.empty((N, B))
     for t in range(T):
         if t:

@@ -57,12 +57,13 @@ def state_of(maturities: Ints) -> Ints:
     return np.array([0, middle, len(maturities) - 1])
 
 
-def fit_curves(yields: Floats, maturities: Ints, names: Sequence[str]) -> CurveNull:
+def fit_curves(yields: Floats, maturities: Ints, names: Sequence[str], *, at_edge: bool = False) -> CurveNull:
     """Fit the expectations hypothesis to yields (T, N, M), NaN for holes, of maturities (M,) in periods, rising.
 
     The state is three of the yields, z = M f with M_mj = L_m(l_j), so z_t = A z_{t-1} + u, A = M diag(l) M^-1; the
     roots l minimise det sum u u' over a grid. Fitting errors are the residuals of the other yields on the state.
-    Refused, with the economy's name, where a slowest root that matters sits on the grid's edge or the fit is poor.
+    Refused, with the economy's name, where the fit is poor or, unless `at_edge`, a slowest root that matters sits on
+    the grid's edge.
     Source: Bekaert, Hodrick and Marshall (1997, JFE 44:309) and Bekaert and Hodrick (2001, JF 56:1357) for draws that
     impose the hypothesis; the roots as parameters are our own.
     """
@@ -76,6 +77,9 @@ def fit_curves(yields: Floats, maturities: Ints, names: Sequence[str]) -> CurveN
     pairs[1:] = there[1:] & there[:-1]
     pool = shock_pool([pairs])
     parts = [_one_curve(yields[:, i], maturities, state, (pairs[:, i], names[i])) for i in range(len(names))]
+    for part, name in zip(parts, names, strict=True):
+        if not at_edge:
+            _refuse_edge(part.roots, part.moves, name)
     fast = np.stack([part.shocks for part in parts], axis=1)
     errors = np.stack([part.errors for part in parts], axis=1)
     fast, errors = (repeated_in_turn(values[pool], pairs[pool]) for values in (fast, errors))
@@ -103,13 +107,17 @@ def choose_roots(before: Floats, after: Floats, maturities: Ints) -> Floats:
 
 @dataclass(frozen=True, eq=False, slots=True)
 class _Curve:
-    """One economy: roots (3,), factors on its first date (3,), shocks (T, 3), errors (T, M), average error."""
+    """One economy: roots (3,), factors on its first date (3,), shocks (T, 3), errors (T, M), average error.
+
+    `moves`: part of the longest yield's standard deviation that the slowest root moves.
+    """
 
     roots: Floats
     start: Floats
     shocks: Floats
     errors: Floats
     noise: float
+    moves: float
 
 
 def _one_curve(yields: Floats, maturities: Ints, state: Ints, place: tuple[Bools, str]) -> _Curve:
@@ -134,9 +142,9 @@ def _one_curve(yields: Floats, maturities: Ints, state: Ints, place: tuple[Bools
     others = np.delete(errors, state, axis=1)[rows]
     noise = float(np.sqrt((others**2).sum() / (others.shape[1] * (len(rows) - z.shape[1] - 1))))
     _refuse_poor_fit(noise, name)
-    _refuse_edge(roots, float(np.std(loads[-1, 2] * factors[rows, 2]) / np.std(z[rows, -1])), name)
+    moves = float(np.std(loads[-1, 2] * factors[rows, 2]) / np.std(z[rows, -1]))
     first = np.isfinite(yields).all(axis=1).argmax()
-    return _Curve(roots, factors[first], shocks, errors, noise)
+    return _Curve(roots, factors[first], shocks, errors, noise, moves)
 
 
 def _refuse_edge(roots: Floats, part: float, name: str) -> None:

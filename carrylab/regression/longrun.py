@@ -12,6 +12,7 @@ import numpy as np
 from carrylab.errors import InferenceError
 from carrylab.regression.sample import Floats
 
+DUST = 1e-12  # part of a series' largest value below which it is rounding left by taking effects out
 NEGATIVE = -1e-8  # an eigenvalue of the scaled covariance below this is no rounding
 
 
@@ -91,8 +92,9 @@ def cosine_count(n: int, overlap: int) -> int:
 
 
 def used_span(series: Floats) -> slice:
-    """Rows from the first to the last in which any of the series is not zero."""
-    used = np.flatnonzero(series.any(axis=1))
+    """Rows from the first to the last in which any of the series is not zero, rounding aside."""
+    size = np.abs(series)
+    used = np.flatnonzero((size > DUST * size.max(axis=0, initial=0.0)).any(axis=1))
     return slice(0, 0) if not len(used) else slice(int(used[0]), int(used[-1]) + 1)
 
 

@@ -33,8 +33,13 @@ class Block:
 
 def report_text(findings: pd.DataFrame, *, title: str, width: int = 100, audit: Iterable[str] = ()) -> str:
     """The whole report, at most `width` columns wide where its words allow."""
+    return parts_text(parts_of(findings, audit), title, width)
+
+
+def parts_text(parts: Iterable[Part], title: str, width: int) -> str:
+    """A title and the parts below it, at most `width` columns wide where their words allow."""
     said = [title, "=" * min(len(title), width)]
-    for part in parts_of(findings, audit):
+    for part in parts:
         said += _part(part, width)
     return "\n".join(said) + "\n"
 
